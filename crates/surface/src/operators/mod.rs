@@ -1,0 +1,1 @@
+//! Discrete differential operators on the surface.
