@@ -167,6 +167,23 @@ pub struct StepControl {
     pub travel: f64,
 }
 
+/// How the mesh is looked after during a run.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub struct MeshCare {
+    /// Whether edges may be split and collapsed where the shape asks for it (flips and smoothing always happen).
+    pub adapt: bool,
+    /// Edge length wanted where nothing asks for a finer mesh [length].
+    pub edge: f64,
+    /// Shortest edge length asked for [length].
+    pub shortest: f64,
+    /// Edges per radius of curvature 1/|c_max|.
+    pub edges_per_radius: f64,
+    /// Edges across the width 2ε of a phase interface.
+    pub edges_per_interface: f64,
+    /// Vertex budget.
+    pub most_vertices: usize,
+}
+
 /// Everything the physics needs to know.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Parameters {
@@ -196,6 +213,8 @@ pub struct Parameters {
     pub loads: Vec<Load>,
     /// Step control.
     pub step: StepControl,
+    /// Mesh care; `None`: the connectivity never changes.
+    pub mesh: Option<MeshCare>,
 }
 
 impl Parameters {
@@ -221,6 +240,7 @@ impl Parameters {
                 shortest: 1e-12,
                 travel: 0.2,
             },
+            mesh: None,
         }
     }
 
