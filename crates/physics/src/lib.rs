@@ -20,6 +20,7 @@
 #![allow(clippy::needless_range_loop, clippy::too_many_arguments)]
 
 pub mod coupling;
+pub mod diagnostics;
 pub mod dissipation;
 pub mod energy;
 pub mod error;

@@ -30,6 +30,10 @@ pub struct Ledger {
     pub work: f64,
     /// Energy changed by mesh motion, remapping and remeshing.
     pub mesh_energy: f64,
+    /// Part of `mesh_energy` that the membrane has yet to give back by smoothing out the roughness of a changed mesh.
+    pub mesh_debt: f64,
+    /// Energy that care of the mesh may spend because loads have done work since it last did.
+    pub mesh_credit: f64,
     /// Lipid (relaxed area) taken from the reservoir.
     pub lipid_drawn: f64,
     /// Accepted steps.

@@ -16,6 +16,7 @@ pub mod geometry;
 pub mod mesh;
 pub mod operators;
 pub mod mesh_motion;
+pub mod necks;
 pub mod remap;
 pub mod remesh;
 

@@ -33,6 +33,9 @@ impl Energies {
     }
 }
 
+/// How many times more viscous the membrane is in the middle of a load patch.
+const GRIP: f64 = 30.0;
+
 /// Geometry and material of a state, measured together and reused from step to step.
 #[derive(Clone, Debug, Default)]
 pub struct Measured {
@@ -90,6 +93,20 @@ impl Measured {
             &self.composition,
             &self.coverage,
         );
+        self.grip(parameters, state);
+    }
+
+    /// Stiffen the membrane against flow where a load holds it. A load on fluid lipids has a part within the surface
+    /// that would stir them for ever, dissipating without end; what really pulls (an adhering bead) holds its patch
+    /// together.
+    fn grip(&mut self, parameters: &Parameters, state: &State) {
+        for (load, place) in parameters.loads.iter().zip(&state.loads) {
+            let reach = 2.0 * load.patch_radius * load.patch_radius;
+            for (viscosity, x) in self.material.shear_viscosity.iter_mut().zip(&state.mesh.positions) {
+                let d = state.mesh.nearest_image(x - place.centre).norm_squared() / reach;
+                *viscosity *= 1.0 + GRIP * (-d).exp();
+            }
+        }
     }
 
     /// Free energy of the measured state.

@@ -3,7 +3,14 @@
 //! A border adds a column c and a row r: A y + Σ c_k z_k = f, r_k·y + Σ D_kl z_l = g_k. The dense rows never enter the
 //! factorisation: each border costs one back-solve.
 
+use super::assemble::Freedom;
+use super::forces::Forces;
 use crate::PhysicsError;
+use crate::energy::reservoirs::offered_pressure;
+use crate::energy::total::Measured;
+use crate::parameters::{Parameters, VolumeCondition};
+use crate::state::State;
+use pellicle_surface::Vec3;
 use nalgebra::{DMatrix, DVector};
 
 /// One scalar unknown with its equation.
@@ -58,4 +65,86 @@ pub fn solve_bordered(
         }
     }
     Ok(scalars.iter().copied().collect())
+}
+
+
+pub(super) fn volume_border(
+    parameters: &Parameters,
+    geometry: &pellicle_surface::geometry::Geometry,
+    freedom: &[Freedom],
+    target: Option<f64>,
+    step: f64,
+) -> Option<Border> {
+    let (diagonal, right) = match (&parameters.volume, target) {
+        (VolumeCondition::Fixed(_), Some(target)) => (0.0, -(target - geometry.volume) / step),
+        (
+            VolumeCondition::Osmotic {
+                inside,
+                permeability,
+                ..
+            },
+            _,
+        ) => {
+            // ∇V·v (1/(A L_p) − dt dΠ/dV) + p = Π(V).
+            let slope = -inside / (geometry.volume * geometry.volume);
+            let resistance = permeability.map_or(0.0, |l| 1.0 / (l * geometry.total_area)) - step * slope;
+            let offered = offered_pressure(&parameters.volume, geometry.volume).unwrap_or(0.0);
+            (-1.0 / resistance, -offered / resistance)
+        }
+        _ => return None,
+    };
+    let mut column = vec![0.0; 4 * freedom.len()];
+    for (i, (f, g)) in freedom.iter().zip(&geometry.volume_gradient).enumerate() {
+        column[4 * i..4 * i + 3].copy_from_slice(&f.reduce(&-g));
+    }
+    Some(Border {
+        column,
+        diagonal,
+        target: right,
+    })
+}
+
+/// Mean tension of a closed surface equals the reservoir's; the interface's share μ̂u is taken off.
+pub(super) fn reservoir_border(state: &State, measured: &Measured, forces: &Forces, tension: f64) -> Border {
+    let n = state.lipid.len();
+    let mut column = vec![0.0; 4 * n];
+    let mut target = 0.0;
+    for i in 0..n {
+        column[4 * i + 3] = -state.lipid[i];
+        let shift = forces
+            .interface_potential
+            .get(i)
+            .map_or(0.0, |p| p * measured.order[i]);
+        target -= state.lipid[i] * (tension + shift);
+    }
+    Border {
+        column,
+        diagonal: 0.0,
+        target,
+    }
+}
+
+/// f = k (gap − dt w·v) along one axis.
+pub(super) fn trap_border(
+    patch: &[(u32, f64)],
+    freedom: &[Freedom],
+    n: usize,
+    axis: usize,
+    stiffness: f64,
+    gap: f64,
+    step: f64,
+) -> Border {
+    let mut column = vec![0.0; 4 * n];
+    let mut unit = Vec3::zeros();
+    unit[axis] = -1.0;
+    for (i, w) in patch {
+        let i = *i as usize;
+        let reduced = freedom[i].reduce(&(unit * *w));
+        column[4 * i..4 * i + 3].copy_from_slice(&reduced);
+    }
+    Border {
+        column,
+        diagonal: -1.0 / (stiffness * step),
+        target: -gap / step,
+    }
 }

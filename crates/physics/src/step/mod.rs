@@ -3,6 +3,12 @@
 pub mod advance;
 pub mod assemble;
 pub mod borders;
+pub mod connectivity;
 pub mod control;
+pub mod exchange;
+pub mod forces;
 pub mod mechanics;
+pub mod memory;
+pub mod mesh_care;
 pub mod pattern;
+pub mod rezone;

@@ -14,7 +14,7 @@
 use crate::PhysicsError;
 use pellicle_sparse::{Analysis, Factor, Pattern};
 use pellicle_surface::geometry::Geometry;
-use pellicle_surface::{Mesh, Topology};
+use pellicle_surface::{Mesh, Topology, Vec3};
 use std::sync::Arc;
 
 /// Solver for one connectivity.
@@ -60,11 +60,11 @@ pub struct Diffused {
 }
 
 impl DiffusionSolver {
-    /// Analyse a connectivity.
+    /// Analyse a connectivity, ordering by the given positions of its vertices.
     ///
     /// # Errors
     /// Errors of the symbolic factorisation.
-    pub fn new(topology: &Topology, mesh: &Mesh) -> Result<Self, PhysicsError> {
+    pub fn new(topology: &Topology, ordered_at: &[Vec3]) -> Result<Self, PhysicsError> {
         let n = topology.n_vertices;
         let mut col_ptr = vec![0];
         let mut row_idx = Vec::new();
@@ -109,7 +109,7 @@ impl DiffusionSolver {
             .iter()
             .map(|t| t.map(|i| t.map(|j| entry(i, j))))
             .collect();
-        let coordinates: Vec<[f64; 3]> = mesh.positions.iter().map(|p| [p.x, p.y, p.z]).collect();
+        let coordinates: Vec<[f64; 3]> = ordered_at.iter().map(|p| [p.x, p.y, p.z]).collect();
         let values = vec![0.0; row_idx.len()];
         let pattern = Pattern {
             n: 2 * n,

@@ -1,0 +1,62 @@
+//! What a simulation remembers beyond its state, so that one taken up again goes on bit for bit.
+
+use super::advance::Simulation;
+use super::connectivity::Connectivity;
+use crate::{Parameters, PhysicsError, State};
+use pellicle_surface::Vec3;
+use serde::{Deserialize, Serialize};
+
+/// Memory of a simulation: warm starts, the wanted mesh, and where the vertices were when the order of elimination
+/// was chosen (another order rounds differently).
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub struct Memory {
+    /// Velocity of the mesh in the last step; empty after a change of connectivity.
+    pub mesh_velocity: Vec<Vec3>,
+    /// Wanted edge length of each vertex.
+    pub wanted_edge: Vec<f64>,
+    /// Chemical potential of the last diffusion step; empty without phases.
+    pub chemical_potential: Vec<f64>,
+    /// Positions of the vertices when the present connectivity was analysed.
+    pub ordered_at: Vec<Vec3>,
+}
+
+impl Simulation {
+    /// What has to be kept beside [`Simulation::state`] to go on later with [`Simulation::restore`].
+    pub fn memory(&self) -> Memory {
+        Memory {
+            mesh_velocity: self.mesh_velocity.clone(),
+            wanted_edge: self.wanted_edge.clone(),
+            chemical_potential: self.chemical_potential.clone(),
+            ordered_at: self.connectivity.ordered_at.clone(),
+        }
+    }
+
+    /// Take a simulation up again where [`Simulation::memory`] was read.
+    ///
+    /// # Shapes
+    /// The lists of `memory` have one entry per vertex, or none where their documentation allows it.
+    ///
+    /// # Errors
+    /// Those of [`Simulation::new`]; a memory that does not belong to the state.
+    pub fn restore(parameters: Parameters, state: State, memory: Memory) -> Result<Self, PhysicsError> {
+        let n = state.mesh.n_vertices();
+        let fits = |length: usize| length == 0 || length == n;
+        if !fits(memory.mesh_velocity.len())
+            || !fits(memory.chemical_potential.len())
+            || memory.wanted_edge.len() != n
+            || memory.ordered_at.len() != n
+        {
+            return Err(PhysicsError::Contradiction(
+                "what the simulation remembers does not belong to its surface",
+            ));
+        }
+        let mut simulation = Self::new(parameters, state)?;
+        if memory.ordered_at != simulation.connectivity.ordered_at {
+            simulation.connectivity = Connectivity::ordered(&simulation.state, memory.ordered_at)?;
+        }
+        simulation.mesh_velocity = memory.mesh_velocity;
+        simulation.wanted_edge = memory.wanted_edge;
+        simulation.chemical_potential = memory.chemical_potential;
+        Ok(simulation)
+    }
+}
