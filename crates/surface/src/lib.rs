@@ -11,6 +11,7 @@
 
 #![deny(missing_docs)]
 
+pub mod contact;
 pub mod error;
 pub mod geometry;
 pub mod mesh;

@@ -5,7 +5,7 @@
 pub mod domains;
 pub mod fields;
 
-pub use fields::{Fields, fields};
+pub use fields::{Fields, chemical_potential, fields};
 
 use crate::parameters::{Load, Pull, VolumeCondition};
 use crate::step::advance::Simulation;

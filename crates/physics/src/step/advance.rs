@@ -66,6 +66,8 @@ pub struct StepReport {
 const SETTLED: f64 = 0.01;
 /// Rise of free energy, relative to its size, that rounding and remapping may cause.
 pub(super) const RISE: f64 = 1e-9;
+/// How far the defect found after a step may exceed the predicted one and still count as one of time stepping.
+const DEFECT_FACTOR: f64 = 4.0;
 /// Share of the loads' work that care of the mesh may spend.
 const CREDIT: f64 = 0.02;
 /// Rounds of [`Simulation::settle_lipids`].
@@ -318,6 +320,14 @@ impl Simulation {
             return Ok(Attempt::Refused(Reason::EnergyRise));
         }
         let dissipated = motion.dissipated + motion.permeation + transported;
+        // Where the shape is unstable the true defect exceeds the prediction, which knows only the positive part of the
+        // second variation. What is far beyond it is noise of the mesh, which shorter steps would not cure.
+        let found = (start.total() + work.with_mean_force - dissipated - self.energies.total()).abs() - given_back;
+        let scale = tolerance * turnover.max(dissipated);
+        loads.add(Reason::MotionAccuracy, found.min(DEFECT_FACTOR * defect) / scale.max(1e-300));
+        if let Some(reason) = loads.refusal() {
+            return Ok(Attempt::Refused(reason));
+        }
         let ledger = &mut self.state.ledger;
         ledger.dissipated += dissipated;
         ledger.work += work.with_mean_force;

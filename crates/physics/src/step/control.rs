@@ -51,14 +51,14 @@ impl Reason {
 /// Each limit as a load: 1 means exactly at its target.
 #[derive(Clone, Copy, Debug)]
 pub struct Loads {
-    entries: [(Reason, f64); 6],
+    entries: [(Reason, f64); 8],
     used: usize,
 }
 
 impl Default for Loads {
     fn default() -> Self {
         Self {
-            entries: [(Reason::None, 0.0); 6],
+            entries: [(Reason::None, 0.0); 8],
             used: 0,
         }
     }

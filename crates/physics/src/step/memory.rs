@@ -50,7 +50,10 @@ impl Simulation {
                 "what the simulation remembers does not belong to its surface",
             ));
         }
-        let mut simulation = Self::new(parameters, state)?;
+        let mut simulation = Self::new(parameters, state.clone())?;
+        // Setting up may settle the lipids of a state that has not moved yet; this one has been through that.
+        simulation.state = state;
+        simulation.measure();
         if memory.ordered_at != simulation.connectivity.ordered_at {
             simulation.connectivity = Connectivity::ordered(&simulation.state, memory.ordered_at)?;
         }

@@ -33,6 +33,9 @@ const URGENT: f64 = 0.4;
 /// Share of the energy released by a step that care may give back.
 const ALLOWANCE: f64 = 0.3;
 
+/// Largest change of coverage or marker wanted along an edge.
+const FIELD_CHANGE: f64 = 0.3;
+
 /// What care did after a step.
 #[derive(Clone, Copy, Debug, Default, PartialEq)]
 pub struct CareReport {
@@ -166,6 +169,18 @@ impl Simulation {
                         let w = &mut wanted[v as usize];
                         *w = w.min(across);
                     }
+                }
+            }
+        }
+        for field in [self.state.coverage(), self.state.marker()] {
+            if field.is_empty() {
+                continue;
+            }
+            for (t, corners) in mesh.triangles.iter().enumerate() {
+                let slope = triangle_gradient(geometry, t, corners, &field).norm();
+                for &v in corners {
+                    let w = &mut wanted[v as usize];
+                    *w = w.min(FIELD_CHANGE / slope.max(f64::MIN_POSITIVE));
                 }
             }
         }

@@ -2,8 +2,8 @@
 //!
 //! Fronts of equal geodesic distance from extremal points sweep over the surface; a front whose length has a
 //! minimum is pulled tight to a closed geodesic. The geodesic is a neck when fronts of equal distance from it become
-//! longer than it is by [`PROMINENCE`] on both sides before any becomes shorter by [`DIP`], and when its radius is
-//! at most [`BREADTH`] of the radius of the sphere with the area of the smaller side.
+//! longer than it is by [`PROMINENCE`] on both sides before any becomes shorter by [`DIP`], not just by leaning over in
+//! a bend (they go on to [`FLARE`] or lie along its axis), and when its radius is at most [`BREADTH`] of the radius of the sphere with the area of the smaller side.
 //!
 //! A long tube that ends in a cap (a tether) has no wider place at its end. It counts as one neck, where its length
 //! round is least, when it flares to [`FLARE`] on one side and the other has the area of a sphere of at least
@@ -19,6 +19,7 @@ use crate::{Mesh, Topology, Vec3};
 use distance::march;
 use serde::{Deserialize, Serialize};
 use std::f64::consts::TAU;
+use verify::{Verdict, verify};
 use walk::{Loop, ends};
 
 /// Share by which fronts on both sides become longer than a neck.
@@ -33,6 +34,8 @@ pub const FLARE: f64 = 1.5;
 pub const TUBE: f64 = 2.0;
 /// Fewest crossings of edges by a loop that is still resolved.
 const LEAST_CROSSINGS: usize = 6;
+/// Most moves of a loop to a shorter one beside it.
+const MOST_SLIDES: usize = 6;
 /// Most extremal points that fronts start from.
 const MOST_SOURCES: usize = 12;
 
@@ -81,7 +84,11 @@ pub fn find(mesh: &Mesh, topology: &Topology, geometry: &Geometry) -> Vec<Neck> 
         geometry,
         necks: Vec::new(),
         settled: vec![false; topology.n_vertices],
+        refused: vec![false; topology.n_vertices],
     };
+    if let Some(period) = mesh.period {
+        found.consider(sweep::cross_sections(mesh, topology, period));
+    }
     // Fronts from the rim of a patch, or from the point farthest from an arbitrary one.
     let mut starts: Vec<(u32, f64, u8)> = (0..topology.n_vertices)
         .filter(|&v| topology.on_rim[v])
@@ -97,13 +104,12 @@ pub fn find(mesh: &Mesh, topology: &Topology, geometry: &Geometry) -> Vec<Neck> 
     if !visited.is_empty() {
         found.consider(sweep::candidates(mesh, topology, geometry, &first));
     }
-    let edge = mesh.mean_edge_length();
-    for tip in sweep::summits(topology, &first.value) {
+    let tips = sweep::summits(mesh, topology, &first);
+    for tip in tips {
         if visited.len() >= MOST_SOURCES {
             break;
         }
-        let near = |&other: &u32| mesh.edge(tip, other).norm() < 3.0 * edge;
-        if visited.iter().any(near) {
+        if visited.contains(&tip) {
             continue;
         }
         visited.push(tip);
@@ -121,44 +127,69 @@ struct Found<'a> {
     geometry: &'a Geometry,
     necks: Vec<Neck>,
     settled: Vec<bool>,
+    /// Vertices beside loops that turned out to be no necks.
+    refused: Vec<bool>,
 }
 
 impl Found<'_> {
     fn consider(&mut self, candidates: Vec<Candidate>) {
         for Candidate { curve, tube } in candidates {
-            if self.known(&curve) {
+            if self.beside(&self.settled, &curve, 0.5) {
                 continue;
             }
-            let tight = curve.clone().tighten(self.mesh, self.topology, LEAST_CROSSINGS);
-            if let Some(tight) = tight
-                && !self.known(&tight)
-                && self.accept(tight, tube)
-            {
-                continue;
-            }
+            let found = self.slide(curve.clone(), tube);
             // A tube slightly thinner towards its end lets the loop slip off: it stays where it was found.
-            if tube {
-                self.accept(curve, true);
+            if !found && tube {
+                let length = curve.length(self.mesh, self.topology);
+                let verdict = verify(self.mesh, self.topology, self.geometry, &curve, length, true);
+                self.keep(curve, length, verdict);
             }
         }
     }
 
-    /// Whether most of a loop lies where a neck has been found.
-    fn known(&self, curve: &Loop) -> bool {
-        let settled = |h: &&u32| {
-            let (a, b) = ends(self.topology, **h);
-            self.settled[a as usize] && self.settled[b as usize]
-        };
-        2 * curve.through.iter().filter(settled).count() > curve.through.len()
+    /// Pull a loop tight, and go on to shorter ones beside it, until a neck is found (or known) or nothing is left.
+    fn slide(&mut self, mut curve: Loop, tube: bool) -> bool {
+        let mut shortest = f64::INFINITY;
+        for _ in 0..MOST_SLIDES {
+            let Some(tight) = curve.tighten(self.mesh, self.topology, LEAST_CROSSINGS) else {
+                return false;
+            };
+            if self.beside(&self.settled, &tight, 0.5) {
+                return true;
+            }
+            let length = tight.length(self.mesh, self.topology);
+            if length >= shortest || (!tube && self.beside(&self.refused, &tight, 0.8)) {
+                return false;
+            }
+            shortest = length;
+            match verify(self.mesh, self.topology, self.geometry, &tight, length, tube) {
+                Verdict::Shorter(front) => curve = front,
+                verdict => return self.keep(tight, length, verdict),
+            }
+        }
+        false
     }
 
-    fn accept(&mut self, curve: Loop, tube: bool) -> bool {
-        let length = curve.length(self.mesh, self.topology);
-        let Some(verdict) = verify::verify(self.mesh, self.topology, self.geometry, &curve, length, tube)
-        else {
+    /// Whether more than `share` of the edges that a loop crosses have both ends marked.
+    fn beside(&self, marked: &[bool], curve: &Loop, share: f64) -> bool {
+        let both = |h: &&u32| {
+            let (a, b) = ends(self.topology, **h);
+            marked[a as usize] && marked[b as usize]
+        };
+        curve.through.iter().filter(both).count() as f64 > share * curve.through.len() as f64
+    }
+
+    /// Put down what became of a loop; whether it is a neck.
+    fn keep(&mut self, curve: Loop, length: f64, verdict: Verdict) -> bool {
+        let Verdict::Neck { side_area, region } = verdict else {
+            for &h in &curve.through {
+                let (a, b) = ends(self.topology, h);
+                self.refused[a as usize] = true;
+                self.refused[b as usize] = true;
+            }
             return false;
         };
-        for vertex in verdict.region {
+        for vertex in region {
             self.settled[vertex as usize] = true;
         }
         self.necks.push(Neck {
@@ -176,7 +207,7 @@ impl Found<'_> {
                     Crossing { right, left, share }
                 })
                 .collect(),
-            side_area: verdict.side_area,
+            side_area,
         });
         true
     }

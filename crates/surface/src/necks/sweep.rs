@@ -4,8 +4,9 @@ use super::distance::Distance;
 use super::walk::{Loop, before, ends, follow};
 use super::{Candidate, TUBE};
 use crate::geometry::Geometry;
-use crate::{Mesh, Topology};
+use crate::{Mesh, Topology, Vec3};
 use petgraph::unionfind::UnionFind;
+use std::collections::HashSet;
 use std::f64::consts::PI;
 
 /// Least ratio of the next maximum to a minimum of front length that makes a candidate.
@@ -13,7 +14,7 @@ const RIDGE: f64 = 1.03;
 
 /// One connected front.
 struct Band {
-    /// The front; `None` at its starting point and where it runs into a rim.
+    /// The front; `None` at a single vertex and where it runs into a rim.
     curve: Option<Loop>,
     /// Its length; 0 at a point, infinite into a rim.
     length: f64,
@@ -21,18 +22,42 @@ struct Band {
     area: f64,
 }
 
-/// Vertices farther than all others within two edges, farthest first.
-pub(super) fn summits(topology: &Topology, distance: &[f64]) -> Vec<u32> {
-    let lower = |v: u32, than: usize| distance[v as usize] <= distance[than];
-    let mut summits: Vec<u32> = (0..topology.n_vertices)
-        .filter(|&v| {
-            topology.neighbours.of(v).iter().all(|&u| {
-                lower(u, v) && topology.neighbours.of(u as usize).iter().all(|&w| lower(w, v))
-            })
-        })
-        .map(|v| v as u32)
-        .collect();
-    summits.sort_by(|&a, &b| distance[b as usize].total_cmp(&distance[a as usize]).then(a.cmp(&b)));
+/// Edges that a summit of distance must rise over the pass to a higher one.
+const RISE: f64 = 2.0;
+
+/// Summits of distance, farthest first, without those of the mesh's making.
+///
+/// Vertices join in the order of falling distance; when two hills meet, the lower summit counts if it rises over
+/// the pass by [`RISE`] local edges.
+pub(super) fn summits(mesh: &Mesh, topology: &Topology, distance: &Distance) -> Vec<u32> {
+    let n = topology.n_vertices;
+    let mut hills = UnionFind::<u32>::new(n);
+    let mut top: Vec<u32> = (0..n as u32).collect();
+    let mut seen = vec![false; n];
+    let mut summits: Vec<u32> = distance.order.last().copied().into_iter().collect();
+    for &v in distance.order.iter().rev() {
+        seen[v as usize] = true;
+        for &u in topology.neighbours.of(v as usize).iter().filter(|&&u| seen[u as usize]) {
+            let (a, b) = (hills.find(u), hills.find(v));
+            if a == b {
+                continue;
+            }
+            let (mut high, mut low) = (top[a as usize], top[b as usize]);
+            if distance.value[high as usize] < distance.value[low as usize] {
+                std::mem::swap(&mut high, &mut low);
+            }
+            let around = topology.neighbours.of(low as usize);
+            let edge: f64 = around.iter().map(|&w| mesh.edge(low, w).norm()).sum::<f64>() / around.len() as f64;
+            if distance.value[low as usize] - distance.value[v as usize] >= RISE * edge {
+                summits.push(low);
+            }
+            hills.union(a, b);
+            top[hills.find(a) as usize] = high;
+        }
+    }
+    summits.sort_by(|&a, &b| {
+        distance.value[b as usize].total_cmp(&distance.value[a as usize]).then(a.cmp(&b))
+    });
     summits
 }
 
@@ -65,6 +90,48 @@ pub(super) fn candidates(
     taken
 }
 
+/// Cross-sections of a periodic tube at right angles to its axis that are shorter than others near them.
+///
+/// Fronts from a point of a wide tube may go once round the period before they go round the tube.
+pub(super) fn cross_sections(mesh: &Mesh, topology: &Topology, period: f64) -> Vec<Candidate> {
+    let count = (2.0 * period / mesh.mean_edge_length()).ceil().max(8.0) as usize;
+    let sections: Vec<Option<(f64, Loop)>> = (0..count)
+        .map(|k| {
+            let level = period * k as f64 / count as f64;
+            let height: Vec<f64> = mesh
+                .positions
+                .iter()
+                .map(|x| mesh.nearest_image(Vec3::new(0.0, 0.0, x.z - level)).z)
+                .collect();
+            let mut seen = HashSet::new();
+            let mut longest: Option<(f64, Loop)> = None;
+            for h in 0..topology.twin.len() as u32 {
+                let (a, b) = ends(topology, h);
+                let (low, high) = (height[a as usize], height[b as usize]);
+                // Not where the height jumps from +½ to −½ period.
+                let crosses = low < 0.0 && high >= 0.0 && high - low < 0.5 * period;
+                if !crosses || seen.contains(&h) {
+                    continue;
+                }
+                let curve = follow(topology, &height, 0.0, h)?;
+                seen.extend(&curve.through);
+                let length = curve.length(mesh, topology);
+                if longest.as_ref().is_none_or(|(known, _)| length > *known) {
+                    longest = Some((length, curve));
+                }
+            }
+            longest
+        })
+        .collect();
+    let length = |k: usize| sections[k % count].as_ref().map_or(f64::INFINITY, |(length, _)| *length);
+    let mut chosen: Vec<(f64, Loop)> = (0..count)
+        .filter(|&k| (1..=3).all(|d| length(k) <= length(k + d) && length(k) <= length(k + count - d)))
+        .filter_map(|k| sections[k].clone())
+        .collect();
+    chosen.sort_by(|a, b| a.0.total_cmp(&b.0));
+    chosen.into_iter().map(|(_, curve)| Candidate { curve, tube: false }).collect()
+}
+
 /// Fronts through vertices in the order of their distance, each standing for the vertices next beyond it.
 fn bands(
     mesh: &Mesh,
@@ -87,11 +154,14 @@ fn bands(
                 let h = before(3 * t + c);
                 (value[ends(topology, h).0 as usize] < level).then_some(h)
             });
-            let curve = inward.and_then(|h| follow(topology, value, level, h));
-            let length = match (&curve, inward) {
-                (Some(curve), _) => curve.length(mesh, topology),
-                (None, Some(_)) => f64::INFINITY,
-                (None, None) => 0.0,
+            let front = inward.map(|h| follow(topology, value, level, h));
+            let (curve, length) = match front {
+                Some(Some(curve)) if !curve.surrounds_vertex(topology) => {
+                    let length = curve.length(mesh, topology);
+                    (Some(curve), length)
+                }
+                Some(None) => (None, f64::INFINITY),
+                _ => (None, 0.0),
             };
             for &h in curve.iter().flat_map(|curve| &curve.through) {
                 let beyond = ends(topology, h).1 as usize;

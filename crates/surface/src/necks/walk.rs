@@ -16,7 +16,9 @@ pub(super) struct Loop {
 /// Curves keep this share of an edge away from vertices, so that no two crossings coincide and stick.
 const MARGIN: f64 = 1e-3;
 /// Rounds of straightening and passing over vertices.
-const ROUNDS: usize = 400;
+const ROUNDS: usize = 120;
+/// Relative shortening per round below which a curve is tight.
+const SETTLED: f64 = 1e-5;
 /// Straightening sweeps per round.
 const SWEEPS: usize = 12;
 
@@ -77,6 +79,25 @@ impl Loop {
             .sum()
     }
 
+    /// Mean of its points weighted with length, and twice its vector area (along its axis).
+    pub fn centre_and_axis(&self, mesh: &Mesh, topology: &Topology) -> (Vec3, Vec3) {
+        let n = self.through.len();
+        let origin = self.point(mesh, topology, 0);
+        let (mut centre, mut axis, mut from, mut length) = (Vec3::zeros(), Vec3::zeros(), Vec3::zeros(), 0.0);
+        for k in 0..n {
+            let to = from
+                + mesh.nearest_image(
+                    self.point(mesh, topology, (k + 1) % n) - self.point(mesh, topology, k),
+                );
+            let step = (to - from).norm();
+            axis += from.cross(&to);
+            centre += (from + to) * (0.5 * step);
+            length += step;
+            from = to;
+        }
+        (origin + centre / length, axis)
+    }
+
     /// Shorten to a closed geodesic. `None` when the curve shrinks onto a vertex or to fewer than `least` crossings.
     pub fn tighten(mut self, mesh: &Mesh, topology: &Topology, least: usize) -> Option<Self> {
         let mut length = self.length(mesh, topology);
@@ -85,16 +106,26 @@ impl Loop {
                 self.straighten(mesh, topology);
             }
             let passed = self.pass_vertices(mesh, topology)?;
-            if self.through.len() < least {
+            if self.through.len() < least || self.surrounds_vertex(topology) {
                 return None;
             }
             let shorter = self.length(mesh, topology);
-            if !passed && (length - shorter).abs() < 1e-7 * length {
+            if !passed && (length - shorter).abs() < SETTLED * length {
                 return Some(self);
             }
             length = shorter;
         }
         Some(self)
+    }
+
+    /// Whether every edge crossed ends in one and the same vertex.
+    pub fn surrounds_vertex(&self, topology: &Topology) -> bool {
+        let Some(&first) = self.through.first() else {
+            return true;
+        };
+        let (right, left) = ends(topology, first);
+        self.through.iter().all(|&h| ends(topology, h).0 == right)
+            || self.through.iter().all(|&h| ends(topology, h).1 == left)
     }
 
     /// Put every crossing on the straight line between its neighbours, the two triangles unfolded.

@@ -1,0 +1,167 @@
+//! The command line, as the user types it.
+
+use clap::{Args, Parser, Subcommand, ValueEnum, ValueHint};
+use std::path::PathBuf;
+
+const EXAMPLES: &str = "\
+Examples:
+  pellicle check vesicle.toml                     what the scenario says, without running it
+  pellicle run vesicle.toml                       run it; results go to vesicle-run/
+  pellicle run vesicle.toml --out trial --set time.end=\"5 s\"
+                                                  the same with one number changed
+  pellicle resume trial                           go on after Ctrl-C, a crash or a power cut
+  pellicle resume trial --until \"20 s\"            go on beyond the time it was planned for
+  pellicle schema > scenario.schema.json          everything a scenario may say, for editors
+
+Results of a run: series.csv opens in any spreadsheet or with pandas, fields.pvd in any viewer of VTK files,
+summary.json says how the run ended.
+
+Exit codes:
+    0  done
+    1  numerical trouble: the solver stopped the run; everything up to there is written
+    2  bad input: the command line, the scenario, or a directory that must not be overwritten
+    3  file trouble: unreadable, unwritable, disc full, damaged, or in use by another run
+  130  interrupted by Ctrl-C or a scheduler; `pellicle resume` goes on";
+
+/// Shapes, flow, phases, binding and loads of fluid lipid membranes.
+#[derive(Debug, Parser)]
+#[command(
+    name = "pellicle",
+    version,
+    about = "Simulates curved fluid lipid membranes: shapes, flow, phases, binding, loads",
+    long_about = "Simulates how a curved fluid lipid membrane moves: bending, in-plane flow, lipid phases, bound \
+                  protein and mechanical loads, coupled, by finite elements on the surface.\n\n\
+                  A scenario (a TOML file) says what the membrane is and how long to watch it. One run writes one \
+                  directory.",
+    after_long_help = EXAMPLES,
+    after_help = "`pellicle --help` shows examples and exit codes.",
+    max_term_width = 100,
+    arg_required_else_help = true
+)]
+pub struct Arguments {
+    /// What to do.
+    #[command(subcommand)]
+    pub command: Command,
+}
+
+/// What to do.
+#[derive(Debug, Subcommand)]
+pub enum Command {
+    /// Run a scenario.
+    #[command(after_long_help = "\
+Examples:
+  pellicle run vesicle.toml
+  pellicle run vesicle.toml --out trial --set membrane.bending_rigidity=\"25 kBT\"
+  pellicle run vesicle.toml --quiet --progress json     under a scheduler
+
+Ctrl-C (or SIGTERM) finishes the step, writes a checkpoint and says how to go on; a second one ends at once.")]
+    Run(Run),
+    /// Go on with a run that was interrupted, or watch a finished one for longer.
+    #[command(after_long_help = "\
+Examples:
+  pellicle resume vesicle-run
+  pellicle resume vesicle-run --until \"20 s\"
+
+A resumed run writes the same bytes as one that was never interrupted. Rows and frames later than the checkpoint
+are dropped and computed again.")]
+    Resume(Resume),
+    /// Say what a scenario means, and what is doubtful about it, without running it.
+    Check(Check),
+    /// Print the JSON schema of scenarios, for editors that complete and check as you type.
+    Schema,
+    /// Print the completions of a shell.
+    #[command(after_long_help = "\
+Example:
+  pellicle completions bash > ~/.local/share/bash-completion/completions/pellicle")]
+    Completions {
+        /// The shell.
+        #[arg(value_name = "SHELL")]
+        shell: clap_complete::Shell,
+    },
+}
+
+/// Arguments of `run`.
+#[derive(Debug, Args)]
+pub struct Run {
+    /// The scenario, a TOML file.
+    #[arg(value_name = "SCENARIO", value_hint = ValueHint::FilePath)]
+    pub scenario: PathBuf,
+    /// Directory for the results [default: the scenario's name with -run, in the current directory].
+    #[arg(long, short, value_name = "DIR", value_hint = ValueHint::DirPath)]
+    pub out: Option<PathBuf>,
+    /// Replace one entry of the scenario, as in time.end="5 s"; may be given again.
+    #[arg(long = "set", value_name = "KEY=VALUE")]
+    pub set: Vec<String>,
+    /// Replace an earlier run in the directory (deletes the files of a run there, nothing else).
+    #[arg(long)]
+    pub force: bool,
+    /// How it goes and what is shown.
+    #[command(flatten)]
+    pub manner: Manner,
+}
+
+/// Arguments of `resume`.
+#[derive(Debug, Args)]
+pub struct Resume {
+    /// Directory of the run.
+    #[arg(value_name = "DIR", value_hint = ValueHint::DirPath)]
+    pub folder: PathBuf,
+    /// Simulated time at which to stop instead of the scenario's, as in "20 s" or 20 (seconds).
+    #[arg(long, value_name = "TIME")]
+    pub until: Option<String>,
+    /// How it goes and what is shown.
+    #[command(flatten)]
+    pub manner: Manner,
+}
+
+/// Arguments of `check`.
+#[derive(Debug, Args)]
+pub struct Check {
+    /// The scenario, a TOML file.
+    #[arg(value_name = "SCENARIO", value_hint = ValueHint::FilePath)]
+    pub scenario: PathBuf,
+    /// Replace one entry of the scenario, as in time.end="5 s"; may be given again.
+    #[arg(long = "set", value_name = "KEY=VALUE")]
+    pub set: Vec<String>,
+    /// Print the scenario with every default filled in, too.
+    #[arg(long)]
+    pub resolved: bool,
+}
+
+/// How a run goes and what it shows.
+#[derive(Debug, Args)]
+pub struct Manner {
+    /// Threads to use; the results do not depend on it [default: all cores].
+    #[arg(long, value_name = "N", value_parser = clap::value_parser!(u16).range(1..=1024))]
+    pub threads: Option<u16>,
+    /// Print errors only.
+    #[arg(long, short)]
+    pub quiet: bool,
+    /// How progress is shown.
+    #[arg(long, value_enum, default_value_t = Shown::Auto)]
+    pub progress: Shown,
+}
+
+/// How progress is shown.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, ValueEnum)]
+pub enum Shown {
+    /// A bar when the error output is a terminal, else nothing.
+    Auto,
+    /// A bar on the error output.
+    Bar,
+    /// One JSON object per line on the standard output.
+    Json,
+    /// Nothing.
+    None,
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use clap::CommandFactory;
+
+    #[test]
+    fn the_command_line_is_consistent() {
+        Arguments::command().debug_assert();
+    }
+}

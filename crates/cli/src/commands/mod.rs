@@ -1,0 +1,8 @@
+//! What the program can be told to do, one file per command.
+
+pub mod check;
+pub mod closing;
+pub mod completions;
+pub mod resume;
+pub mod run;
+pub mod schema;
