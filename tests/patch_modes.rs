@@ -130,7 +130,7 @@ fn check(rim: Rim, n: i32, tension: f64, edges: &[f64], limit: f64) -> Fallible 
     Ok(())
 }
 
-const EDGES: [f64; 3] = [0.14, 0.098, 0.07];
+const EDGES: [f64; 3] = [0.14, 0.085, 0.05];
 
 #[test]
 fn roots_are_those_of_the_tables() {

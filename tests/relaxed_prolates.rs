@@ -57,7 +57,7 @@ fn rest(reference: &Reference, edge: f64) -> Result<Rest, Box<dyn std::error::Er
     let mut parameters = vesicle(&mesh);
     parameters.mesh = Some(flips_only(&mesh));
     let mut s = start(parameters, mesh)?;
-    let steps = to_rest(&mut s, 3e-6, 300)?;
+    let steps = to_rest(&mut s, 3e-5, 300)?;
     let geometry = &s.measured.geometry;
     let (area, volume) = (geometry.total_area, geometry.volume);
     let radius = (area / (4.0 * PI)).sqrt();

@@ -52,7 +52,11 @@ fn stiffness(n: usize, degrees: &[usize]) -> Result<Vec<f64>, Box<dyn std::error
     };
     // Preconditioner: bending rows, a little viscosity and friction, restricted to normal motion.
     let still = Bare::new(irregular_sphere(n, SEED)?)?;
-    let (rows, _) = still.bending_rows_and_gradient(0.0);
+    let (mut rows, _) = still.bending_rows_and_gradient(0.0);
+    // The assembly takes rows in the unknowns of each vertex: here the normal velocity comes first and alone.
+    for (row, member) in rows.iter_mut().zip(&still.stencils.members) {
+        *row = Vec3::new(row.dot(&places[*member as usize]), 0.0, 0.0);
+    }
     let parameters = Parameters::bare(1.0, 1.0, 1.0);
     let state = State::at_rest(&parameters, still.mesh.clone(), &[], &[], &[])?;
     let mut connectivity = Connectivity::new(&state)?;
@@ -79,7 +83,11 @@ fn stiffness(n: usize, degrees: &[usize]) -> Result<Vec<f64>, Box<dyn std::error
     connectivity.factor.factorise(&connectivity.values)?;
     let rigid: Vec<Vec<f64>> = [(0, 0), (1, -1), (1, 0), (1, 1)]
         .iter()
-        .map(|(l, m)| places.iter().map(|x| harmonic(*l, *m, x)).collect())
+        .map(|(l, m)| {
+            let y: Vec<f64> = places.iter().map(|x| harmonic(*l, *m, x)).collect();
+            let size: f64 = y.iter().zip(&area).map(|(y, a)| a * y * y).sum::<f64>().sqrt();
+            y.iter().map(|y| y / size).collect()
+        })
         .collect();
     // Displacements without sizes and shifts (area-weighted), loads without their work on them.
     let project_load = |f: &mut Vec<f64>| {

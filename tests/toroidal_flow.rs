@@ -1,7 +1,7 @@
 //! Flow and tension on a sphere under a load within the surface.
 //!
-//! A toroidal load f = x × ∇Y_l drives v = f / (ζ (l−1)(l+2)/R²), no tension. A potential load ∇Y_l is borne by
-//! tension λ = Y_l (up to its mean) without any flow. Errors are relative and root-mean-square over the surface, mean
+//! A toroidal load f = x × ∇Y_l drives v = f / (ζ (l−1)(l+2)/R²), no tension. The load −∇Y_l + (2/R) Y_l n is
+//! borne by tension λ = Y_l (up to its mean) without any flow. Errors are relative and root-mean-square over the surface, mean
 //! over the orders m of the load.
 //!
 //! # Source
@@ -42,8 +42,9 @@ fn tension_error(n: usize, l: usize) -> Result<f64, Box<dyn std::error::Error>> 
     let mut sum = 0.0;
     let orders = [0, 1, -2];
     for m in orders {
-        // The membrane pulls with ∇λ; at rest this balances the load.
-        let load: Vec<Vec3> = bare.mesh.positions.iter().map(|x| -gradient(l, m, x)).collect();
+        // The membrane pulls with ∇λ − 2Hλ n; at rest this balances the load.
+        let load: Vec<Vec3> =
+            bare.mesh.positions.iter().map(|x| x * (2.0 * harmonic(l, m, x)) - gradient(l, m, x)).collect();
         let (_, tension) = flow(&bare, &load, RESISTANCE)?;
         let area = &bare.geometry.vertex_area;
         let (mut gap, mut size) = (0.0, 0.0);

@@ -1,4 +1,4 @@
-//! The solver's own viscous matrix under a given load: flow and tension, no bending.
+//! The solver's own matrix on a unit sphere under a given load: flow and tension.
 
 use super::geometry::Bare;
 use nalgebra::{Matrix6, Vector6};
@@ -8,7 +8,9 @@ use pellicle_physics::step::connectivity::Connectivity;
 use pellicle_physics::{Parameters, PhysicsError, State};
 use pellicle_surface::Vec3;
 
-/// Velocity and tension under a load per area at each vertex; unit viscosity, incompressible lipids. `resistance` is
+/// Velocity and tension under a load per area at each vertex; unit viscosity, incompressible lipids. Bending is at
+/// ease (C R = 2) and enters implicitly over a short step, as in the solver: it keeps facets from moving normally at the
+/// scale of the mesh and is blind to smooth flow within a sphere. `resistance` is
 /// the friction that fixes rigid motions, which are removed from load and answer.
 pub fn flow(bare: &Bare, load: &[Vec3], resistance: f64) -> Result<(Vec<Vec3>, Vec<f64>), PhysicsError> {
     let n = bare.mesh.n_vertices();
@@ -27,13 +29,13 @@ pub fn flow(bare: &Bare, load: &[Vec3], resistance: f64) -> Result<(Vec<Vec3>, V
             topology: &bare.topology,
             geometry: &bare.geometry,
             pattern: &connectivity.pattern,
-            bending_rows: &vec![Vec3::zeros(); bare.stencils.members.len()],
+            bending_rows: &bare.bending_rows_and_gradient(2.0).0,
             stress: &vec![none; bare.mesh.n_triangles()],
             viscosity: &vec![1.0; n],
             friction: &friction,
             lipid: &state.lipid,
-            area_compression_modulus: 1e6,
-            step: 1e6,
+            area_compression_modulus: 1e12,
+            step: 1e-3,
             deviatoric: false,
             freedom: &vec![Freedom::Free; n],
         },

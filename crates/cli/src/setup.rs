@@ -26,7 +26,7 @@ pub struct StopRules {
     pub neck_radius: Option<f64>,
     /// Number of domains of the minority phase, at or below which the run ends, once there were more.
     pub domain_count: Option<usize>,
-    /// At rest: largest material speed × elapsed time / edge length below this for several steps.
+    /// At rest: `StepReport::unrest` below this for several steps.
     pub at_rest: Option<f64>,
 }
 

@@ -146,7 +146,7 @@ fn domains_and_their_lines() {
             near(d.interface_length.expect("phases"), line, 5e-3);
             let total: f64 = composition.iter().zip(&s.state.lipid).map(|(c, m)| c * m).sum();
             near(d.composition_total.expect("phases"), total, 1e-12);
-            near(d.composition_mean.expect("phases"), total / d.area, 1e-12);
+            near(d.composition_mean.expect("phases"), total / s.state.lipid.iter().sum::<f64>(), 1e-12);
         }
     }
     // One phase alone has neither domains nor lines.
@@ -164,6 +164,7 @@ fn periodic_tube_with_twist_and_protein() {
     let coverage: Vec<f64> = mesh.positions.iter().map(|x| 0.3 + 0.2 * x.x).collect();
     let mut p = Parameters::bare(1.0, 3.0, 1e4);
     p.protein = Some(protein());
+    p.area = AreaCondition::Reservoir(1.0);
     let mut s = simulation(p, mesh, &[], &coverage);
     let k = TAU / length;
     s.state.velocity = s
@@ -187,7 +188,8 @@ fn periodic_tube_with_twist_and_protein() {
         let z = (x[0].z + x[1].z + x[2].z) / 3.0;
         // First order on triangles: half an edge (0.05) times k.
         assert!((shear - rate * (k * z).cos().abs()).abs() < 0.06 * rate, "{shear} at {z}");
-        near(f.dissipation[t].max(1e-12), (3.0 * shear * shear).max(1e-12), 2e-2 + 1e-3 / shear.max(0.05));
+        // With a lipid reservoir dilation costs nothing: ζ γ̇² is all.
+        assert!((f.dissipation[t] - 3.0 * shear * shear).abs() < 1e-12);
     }
 }
 

@@ -16,6 +16,9 @@ pub enum SparseError {
         /// What would have been right, in words.
         expected: &'static str,
     },
+    /// The pattern has no columns.
+    #[error("the matrix has no unknowns")]
+    Empty,
     /// A column's row indices do not increase strictly, or leave the upper triangle.
     #[error(
         "row {row} in column {column} is out of place: rows of a column must increase strictly and stay in the upper triangle (row ≤ column)"
@@ -72,7 +75,8 @@ pub enum SparseError {
         /// Column of the entry.
         column: usize,
     },
-    /// A pivot vanished to rounding: the matrix is singular, hence not quasi-definite.
+    /// A pivot overflowed, or vanished to rounding (within 4 ε of the entry it came from): the
+    /// matrix is singular, hence not quasi-definite.
     #[error(
         "the pivot of unknown {unknown} vanishes: the matrix is singular; tie down its null vectors or check the signs of its diagonal blocks"
     )]

@@ -2,36 +2,33 @@
 
 use std::sync::Arc;
 
-use faer::dyn_stack::{MemBuffer, MemStack};
-use faer::sparse::SparseColMatRef;
-use faer::sparse::SymbolicSparseColMatRef;
-use faer::linalg::cholesky::ldlt::factor::LdltError;
-use faer::sparse::linalg::cholesky::LdltRef;
-use faer::{Conj, MatMut, Par, Side};
-
 use crate::krylov::norm;
+use crate::numeric::Numeric;
+use crate::substitution::Substitution;
 use crate::{Analysis, SparseError, symmetric_multiply};
 
 /// LDLᵀ factor of a matrix with the analysed pattern, and the memory to compute it.
+///
+/// Both the factorisation and the solution use the threads of the rayon pool they are called in.
+/// Their results are the same to the last bit for any number of threads.
 pub struct Factor {
     analysis: Arc<Analysis>,
     values: Vec<f64>,
-    memory: MemBuffer,
+    arena: Vec<f64>,
+    vectors: Vec<f64>,
     rhs: Vec<f64>,
     residual: Vec<f64>,
     valid: bool,
 }
 
 impl Factor {
-    /// Storage for a factor, without numbers in it yet.
+    /// Storage for a factor, without numbers in it yet. Later calls allocate nothing.
     pub fn new(analysis: &Arc<Analysis>) -> Self {
-        let symbolic = &analysis.symbolic;
-        let scratch = symbolic
-            .factorize_numeric_ldlt_scratch::<f64>(Par::Seq, Default::default())
-            .or(symbolic.solve_in_place_scratch::<f64>(1, Par::Seq));
+        let plan = &analysis.plan;
         Self {
-            values: vec![0.0; symbolic.len_val()],
-            memory: MemBuffer::new(scratch),
+            values: vec![0.0; plan.factor_length],
+            arena: vec![0.0; plan.arena_length],
+            vectors: vec![0.0; plan.vector_length],
             rhs: vec![0.0; analysis.n()],
             residual: vec![0.0; analysis.n()],
             analysis: Arc::clone(analysis),
@@ -63,23 +60,10 @@ impl Factor {
                 column: pattern.col_ptr.partition_point(|&start| start <= entry) - 1,
             });
         }
-        let n = pattern.n;
-        let structure =
-            SymbolicSparseColMatRef::new_checked(n, n, &pattern.col_ptr, None, &pattern.row_idx);
-        self.analysis
-            .symbolic
-            .factorize_numeric_ldlt(
-                &mut self.values,
-                SparseColMatRef::new(structure, values),
-                Side::Upper,
-                Default::default(),
-                Par::Seq,
-                MemStack::new(&mut self.memory),
-                Default::default(),
-            )
-            .map_err(|LdltError::ZeroPivot { index }| SparseError::SingularPivot {
-                unknown: self.analysis.order()[index],
-            })?;
+        let plan = &self.analysis.plan;
+        Numeric { plan, values }
+            .run(&mut self.values, &mut self.arena)
+            .map_err(|place| SparseError::SingularPivot { unknown: self.analysis.order()[place] })?;
         self.valid = true;
         Ok(())
     }
@@ -92,12 +76,21 @@ impl Factor {
         assert!(self.valid, "no factorisation to solve with");
         let n = self.analysis.n();
         assert_eq!(rhs.len(), n, "one number per unknown");
-        LdltRef::new(&self.analysis.symbolic, &self.values).solve_in_place_with_conj(
-            Conj::No,
-            MatMut::from_column_major_slice_mut(rhs, n, 1),
-            Par::Seq,
-            MemStack::new(&mut self.memory),
-        );
+        let plan = &self.analysis.plan;
+        let order = self.analysis.order();
+        for node in &plan.nodes {
+            let unknowns = &order[node.begin..node.begin + node.columns];
+            for (v, &unknown) in self.vectors[node.vector..].iter_mut().zip(unknowns) {
+                *v = rhs[unknown];
+            }
+        }
+        Substitution { plan, factor: &self.values }.run(&mut self.vectors);
+        for node in &plan.nodes {
+            let unknowns = &order[node.begin..node.begin + node.columns];
+            for (v, &unknown) in self.vectors[node.vector..].iter().zip(unknowns) {
+                rhs[unknown] = *v;
+            }
+        }
     }
 
     /// Replaces `rhs` by the solution after one step of iterative refinement and returns

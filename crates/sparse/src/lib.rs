@@ -7,17 +7,23 @@
 #![deny(missing_docs)]
 
 mod cover;
+mod dense;
 mod error;
 mod factor;
 mod graph;
 mod krylov;
+mod market;
+mod numeric;
 mod ordering;
 mod pattern;
+mod plan;
+mod substitution;
 mod symbolic;
 mod tree;
 
 pub use error::SparseError;
 pub use factor::Factor;
 pub use krylov::{GmresOutcome, GmresWorkspace, gmres};
+pub use market::write_matrix_market;
 pub use pattern::{Pattern, symmetric_multiply};
 pub use symbolic::Analysis;

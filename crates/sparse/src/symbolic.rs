@@ -3,12 +3,13 @@
 use faer::sparse::SymbolicSparseColMatRef;
 use faer::sparse::linalg::SupernodalThreshold;
 use faer::sparse::linalg::cholesky::{
-    CholeskySymbolicParams, SymbolicCholesky, SymmetricOrdering, factorize_symbolic_cholesky,
+    CholeskySymbolicParams, SymbolicCholeskyRaw, SymmetricOrdering, factorize_symbolic_cholesky,
 };
 use faer::{Side, perm::PermRef};
 
 use crate::graph::Graph;
 use crate::ordering::nested_dissection;
+use crate::plan::Plan;
 use crate::tree::postordered;
 use crate::{Pattern, SparseError};
 
@@ -17,9 +18,7 @@ use crate::{Pattern, SparseError};
 pub struct Analysis {
     pattern: Pattern,
     order: Vec<usize>,
-    pub(crate) symbolic: SymbolicCholesky<usize>,
-    factor_entries: usize,
-    flops: f64,
+    pub(crate) plan: Plan,
 }
 
 impl Analysis {
@@ -27,7 +26,7 @@ impl Analysis {
     /// per entry of `coordinates` (any unit; only proportions count).
     ///
     /// # Errors
-    /// A pattern that breaks its promises, a block size that does not divide it, coordinates that
+    /// A pattern that breaks its promises or is empty, a block size that does not divide it, coordinates that
     /// are not finite, or `TooLarge`.
     pub fn new(
         pattern: Pattern,
@@ -36,6 +35,9 @@ impl Analysis {
     ) -> Result<Self, SparseError> {
         pattern.check()?;
         let n = pattern.n;
+        if n == 0 {
+            return Err(SparseError::Empty);
+        }
         let points = coordinates.len();
         if block.checked_mul(points) != Some(n) || block == 0 {
             return Err(SparseError::BlockSize {
@@ -48,11 +50,14 @@ impl Analysis {
             return Err(SparseError::NonFinitePoint { point });
         }
         let graph = Graph::of_blocks(&pattern, block);
-        let nodes = postordered(&graph, &nested_dissection(&graph, coordinates));
-        let order: Vec<usize> = nodes
-            .iter()
-            .flat_map(|&node| (0..block).map(move |k| node as usize * block + k))
+        let order: Vec<u32> = nested_dissection(&graph, coordinates)
+            .into_iter()
+            .flat_map(|node| (0..block as u32).map(move |k| node * block as u32 + k))
             .collect();
+        // By unknowns, not by blocks: those of one block need not be coupled.
+        let unknowns = Graph::of_blocks(&pattern, 1);
+        let order: Vec<usize> =
+            postordered(&unknowns, &order).into_iter().map(|k| k as usize).collect();
         let mut position = vec![0; n];
         for (k, &unknown) in order.iter().enumerate() {
             position[unknown] = k;
@@ -67,14 +72,11 @@ impl Analysis {
             },
         )
         .map_err(|_| SparseError::TooLarge { unknowns: n })?;
-        let factor_entries = symbolic.len_val();
-        Ok(Self {
-            pattern,
-            order,
-            symbolic,
-            factor_entries,
-            flops: 0.0,
-        })
+        let SymbolicCholeskyRaw::Supernodal(supernodes) = symbolic.raw() else {
+            return Err(SparseError::TooLarge { unknowns: n });
+        };
+        let plan = Plan::new(&pattern, &position, supernodes)?;
+        Ok(Self { pattern, order, plan })
     }
 
     /// Order of the matrix.
@@ -84,12 +86,12 @@ impl Analysis {
 
     /// Numbers stored for the factor.
     pub fn factor_entries(&self) -> usize {
-        self.factor_entries
+        self.plan.factor_length
     }
 
     /// Multiplications and additions of one numeric factorisation.
     pub fn flops(&self) -> f64 {
-        self.flops
+        self.plan.flops
     }
 
     /// The pattern analysed.

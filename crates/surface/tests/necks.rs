@@ -134,66 +134,129 @@ fn pearled(waves: usize, n_vertices: usize, seed: u64) -> Mesh {
 }
 
 #[test]
-#[ignore = "prints"]
-fn survey() {
-    let show = |name: &str, mesh: &Mesh, exact: f64| {
-        let topology = Topology::new(mesh.n_vertices(), &mesh.triangles).unwrap();
-        let geometry = Geometry::new(mesh);
-        let mut ms = f64::INFINITY;
-        let mut found = Vec::new();
-        for _ in 0..5 {
-            let clock = || -> f64 {
-                let stat = std::fs::read_to_string("/proc/thread-self/schedstat").unwrap();
-                stat.split_whitespace().next().unwrap().parse::<f64>().unwrap() * 1e-6
-            };
-            let start = clock();
-            found = necks::find(mesh, &topology, &geometry);
-            ms = ms.min(clock() - start);
-        }
-        let radii: Vec<String> = found
-            .iter()
-            .map(|n| format!("{:.4}({:+.1}% {})", n.radius, 100.0 * (n.radius / exact - 1.0), n.crossings.len()))
-            .collect();
-        println!("{name:28} V {:6} {ms:7.2} ms  {} necks {radii:?}", mesh.n_vertices(), found.len());
-    };
+fn convex_and_even_surfaces_have_no_necks() {
     for n in [600, 1200, 2500] {
-        show("sphere", &irregular_sphere(n, 1).unwrap(), 1.0);
-        for axes in [[1.0, 2.0, 3.0], [1.0, 1.0, 5.0], [3.0, 3.0, 1.0], [1.0, 1.0, 8.0]] {
-            show(&format!("ellipsoid {axes:?}"), &irregular_ellipsoid(axes, n, 2).unwrap(), 1.0);
-        }
-        show("torus", &irregular_torus(2.0, 0.5, n, 3).unwrap(), 1.0);
-        show("fat torus", &irregular_torus(2f64.sqrt(), 1.0, n, 3).unwrap(), 1.0);
-        show("plain tube", &irregular_tube(1.0, 20.0, n, 4).unwrap(), 1.0);
-    }
-    show("capped tube", &capped_tube(1.0, 20.0, 0.3).unwrap(), 1.0);
-    show("red cell", &red_cell(3.91, 0.25).unwrap(), 1.0);
-    show("regular sphere", &sphere(1.0, 0.08).unwrap(), 1.0);
-    for waves in [1, 2, 5, 8] {
         for seed in 0..2 {
-            show(&format!("pearled {waves}"), &pearled(waves, 500 * waves, seed), 0.4);
+            let mut meshes = vec![
+                ("sphere", irregular_sphere(n, seed).unwrap()),
+                ("torus", irregular_torus(2.0, 0.5, n, seed).unwrap()),
+                ("tube", irregular_tube(1.0, 20.0, n, seed).unwrap()),
+            ];
+            for axes in [[1.0, 2.0, 3.0], [1.0, 1.0, 5.0], [3.0, 3.0, 1.0], [1.0, 1.0, 8.0]] {
+                meshes.push(("ellipsoid", irregular_ellipsoid(axes, n, seed).unwrap()));
+            }
+            for (name, mesh) in meshes {
+                assert_eq!(find(&mesh), [], "{name} of {n}, seed {seed}");
+            }
         }
     }
-    for waist in [0.7, 0.5, 0.3, 0.2, 0.1, 0.05] {
-        for around in [8.0, 12.0, 20.0] {
+    assert_eq!(find(&red_cell(3.91, 0.25).unwrap()), []);
+    assert_eq!(find(&sphere(1.0, 0.08).unwrap()), []);
+    assert_eq!(find(&capped_tube(1.0, 20.0, 0.3).unwrap()), []);
+}
+
+#[test]
+fn one_neck_between_two_balls() {
+    // A polygon of n vertices round a circle is shorter by (π/n)²/6, 2.5 % for n = 8. The loop passes between rings
+    // of vertices, half an edge off the waist, where chords are longer: w (cosh(h/2w) − 1) for edges h = 2πw/n,
+    // 7.9 % for n = 8 and 2 % for n = 16. Measured: 8 round +1.0 to +3.6 %, 12 round −0.7 to +1.6 %,
+    // 20 round −0.2 to +0.5 %.
+    for (around, tolerance) in [(8.0, 0.04), (12.0, 0.02), (20.0, 0.01)] {
+        for waist in [0.5, 0.3, 0.2, 0.1, 0.05] {
             for seed in 0..3 {
                 let edge = |rho: f64| (TAU * rho.max(waist) / around).min(0.2);
-                show(&format!("dumbbell {waist} /{around}"), &revolved(&dumbbell(waist), edge, seed), waist);
+                let mesh = revolved(&dumbbell(waist), edge, seed);
+                let found = find(&mesh);
+                assert_eq!(found.len(), 1, "waist {waist}, {around} round, seed {seed}");
+                let neck = &found[0];
+                assert!(
+                    (neck.radius / waist - 1.0).abs() < tolerance,
+                    "waist {waist}, {around} round, seed {seed}: {}",
+                    neck.radius
+                );
+                let [left, right] = neck.side_area;
+                assert!((left / right - 1.0).abs() < 0.1, "{left} {right}");
             }
-        }
-    }
-    for around in [8.0, 12.0, 20.0] {
-        for seed in 0..2 {
-            let edge = |rho: f64| (TAU * rho.max(0.1) / around).min(0.2);
-            let bud = patch_with_tube(1.5, 0.1, 0.1, 0.01, 0.5);
-            show(&format!("bud /{around}"), &revolved(&bud, edge, seed), 0.1);
-            let tether = patch_with_tube(1.0, 0.2, 0.1, 2.0, 0.1);
-            show(&format!("tether /{around}"), &revolved(&tether, edge, seed), 0.1);
-            let mut bent = revolved(&tether, edge, seed);
-            for x in &mut bent.positions {
-                x.x += 0.3 * x.z * x.z;
-            }
-            show(&format!("bent tether /{around}"), &bent, 0.1);
         }
     }
 }
 
+#[test]
+fn every_pearl_has_its_neck() {
+    // Edges of 0.27 on a waist of 0.4: nine to ten round. Measured: −0.5 to +0.3 %.
+    for waves in [1, 2, 5, 8] {
+        for seed in 0..2 {
+            let found = find(&pearled(waves, 500 * waves, seed));
+            assert_eq!(found.len(), waves, "{waves} waves, seed {seed}");
+            for neck in found {
+                assert!((neck.radius / 0.4 - 1.0).abs() < 0.01, "{}", neck.radius);
+                // At the waist, half a period from the widest place: to a fraction of an edge.
+                for point in &neck.points {
+                    let from_waist = (point.z / 6.0).fract() - 0.5;
+                    assert!((from_waist * 6.0).abs() < 0.4, "{from_waist}");
+                }
+            }
+        }
+    }
+}
+
+#[test]
+fn buds_and_tethers_on_a_patch() {
+    // Measured: bud +0.7 to +3.7 % (8, 12 round; between rings as above), −0.2 % (20 round); tether −2.8, −1.3,
+    // −0.4 %, what inscribed polygons lose.
+    for (around, bud_tolerance, tether_tolerance) in [(8.0, 0.05, 0.04), (12.0, 0.05, 0.02), (20.0, 0.01, 0.01)] {
+        for seed in 0..2 {
+            let edge = |rho: f64| (TAU * rho.max(0.1) / around).min(0.2);
+            let bud = find(&revolved(&patch_with_tube(1.5, 0.1, 0.1, 0.01, 0.5), edge, seed));
+            assert_eq!(bud.len(), 1);
+            assert!((bud[0].radius / 0.1 - 1.0).abs() < bud_tolerance, "{}", bud[0].radius);
+            let [left, right] = bud[0].side_area;
+            assert!(left.is_infinite() != right.is_infinite(), "one side has the rim");
+            assert!((left.min(right) / PI - 1.0).abs() < 0.15, "the bud's area: {left} {right}");
+
+            let mut mesh = revolved(&patch_with_tube(1.0, 0.2, 0.1, 2.0, 0.1), edge, seed);
+            let tether = find(&mesh);
+            assert_eq!(tether.len(), 1);
+            assert!((tether[0].radius / 0.1 - 1.0).abs() < tether_tolerance, "{}", tether[0].radius);
+            // Bent sideways (sheared, so thinner) it is still one.
+            for x in &mut mesh.positions {
+                x.x += 0.3 * x.z * x.z;
+            }
+            let bent = find(&mesh);
+            assert_eq!(bent.len(), 1);
+            assert!((0.06..0.1).contains(&bent[0].radius), "{}", bent[0].radius);
+        }
+    }
+    // A shallow bump is none.
+    assert_eq!(find(&disc(1.0, 0.1).unwrap()), []);
+}
+
+#[test]
+fn loops_are_closed_curves_on_the_mesh_and_turn_with_it() {
+    let edge = |rho: f64| (TAU * rho.max(0.2) / 12.0).min(0.2);
+    let mesh = revolved(&dumbbell(0.2), edge, 4);
+    let neck = find(&mesh).remove(0);
+    let n = neck.crossings.len();
+    let mut length = 0.0;
+    for k in 0..n {
+        let (this, next) = (neck.crossings[k], neck.crossings[(k + 1) % n]);
+        assert!((0.0..=1.0).contains(&this.share));
+        let (a, b) = (mesh.positions[this.right as usize], mesh.positions[this.left as usize]);
+        assert!((a + (b - a) * this.share - neck.points[k]).norm() < 1e-12);
+        length += (neck.points[(k + 1) % n] - neck.points[k]).norm();
+        let mut corners = vec![this.right, this.left, next.right, next.left];
+        corners.sort_unstable();
+        corners.dedup();
+        assert!(mesh.triangles.iter().any(|t| corners.iter().all(|v| t.contains(v))), "one triangle");
+    }
+    assert!((length - neck.length).abs() < 1e-12 && (neck.length / TAU - neck.radius).abs() < 1e-15);
+
+    let turn = nalgebra::Rotation3::from_euler_angles(0.7, -1.1, 2.3);
+    let mut turned = mesh.clone();
+    for x in &mut turned.positions {
+        *x = turn * (*x * 3.0) + Vec3::new(5.0, -2.0, 1.0);
+    }
+    let other = find(&turned).remove(0);
+    // The curve is tight to 1e-5 of its length; rounding may change where it stops.
+    assert!((other.radius / (3.0 * neck.radius) - 1.0).abs() < 1e-4);
+}

@@ -59,7 +59,7 @@ fn eigenvalues_of_the_sphere_converge_at_second_order() {
     }
 }
 
-/// Largest scatter of a measured order about 2 (measured: up to 0.1, see the printed table).
+/// Largest scatter of a measured order about 2 (measured: 1.84 to 2.04).
 const ORDER: f64 = 0.2;
 
 #[test]

@@ -138,7 +138,7 @@ impl Cursor {
         advance(&mut self.next_frame, cadence.frame_every, time);
     }
 
-    /// Note whether the last step was at rest; `unrest` is how far the fastest vertex would have come by now, in edges.
+    /// Note whether the last step was at rest; `unrest` is the step report's.
     pub fn note_rest(&mut self, limit: f64, unrest: f64) {
         self.resting = if unrest < limit { self.resting.saturating_add(1) } else { 0 };
     }

@@ -288,7 +288,7 @@ const OUTPUT: &[Key] = &[
 const STOP: &[Key] = &[
     key("neck_radius", Quantity(m::LENGTH, Positive), "\"0.2 um\"", "end when the narrowest neck is below"),
     key("domain_count", Whole(1, 1_000_000), "1", "end when so few domains are left, once there were more"),
-    key("at_rest", Number(AboveUpTo(0.0, 1.0)), "1e-4", "end when speed x elapsed time / edge length stays below"),
+    key("at_rest", Number(AboveUpTo(0.0, 1.0)), "1e-3", "end when 100 x the energy that as long a time again would release / all energy released so far stays below").or("1e-3"),
 ];
 
 /// The key at a dotted path; items of lists are left out (`load.path.time`).

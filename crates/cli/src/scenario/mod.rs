@@ -164,7 +164,7 @@ fn ready(mut values: Values, thermal_energy: f64, title: &str) -> Result<Setup, 
             time: in_units("time.end", m::TIME).unwrap_or(0.0),
             neck_radius: in_units("stop.neck_radius", m::LENGTH),
             domain_count: values.whole("stop.domain_count").map(|count| count.max(0) as usize),
-            at_rest: values.number("stop.at_rest"),
+            at_rest: Some(values.number("stop.at_rest").unwrap_or(1e-3)),
         },
         cadence: Cadence {
             row_every: in_units("output.row_every", m::TIME),

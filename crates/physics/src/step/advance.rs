@@ -56,7 +56,9 @@ pub struct StepReport {
     pub lag: f64,
     /// Energy dissipated by each process during the step.
     pub dissipated: f64,
-    /// Largest normal speed × time since the start / local edge length: below a few hundredths the shape is at rest.
+    /// How far from rest: 100 × (energy that would be released in as long a time again at the present rate / all energy
+    /// turned over so far). Below 1e-3, going on as long again would change the energy by less than a hundred-thousandth
+    /// of what has happened. Infinite while a load or the volume is driven.
     pub unrest: f64,
     /// What was done to the mesh after the step.
     pub care: CareReport,
@@ -65,7 +67,11 @@ pub struct StepReport {
 /// Share of everything dissipated so far within which a step's own defect does not count.
 const SETTLED: f64 = 0.01;
 /// Rise of free energy, relative to its size, that rounding and remapping may cause.
-pub(super) const RISE: f64 = 1e-9;
+pub(super) const RISE: f64 = 1e-12;
+/// A load beyond this is refused rather than corrected in the next step.
+const LATITUDE: f64 = 2.5;
+/// So many steps at the start are refused at a load of 1.
+const STRICT_STEPS: u64 = 20;
 /// How far the defect found after a step may exceed the predicted one and still count as one of time stepping.
 const DEFECT_FACTOR: f64 = 4.0;
 /// Share of the loads' work that care of the mesh may spend.
@@ -219,7 +225,15 @@ impl Simulation {
         loop {
             let before = self.state.clone();
             let energies = self.energies;
-            match self.attempt(step)? {
+            let outcome = match self.attempt(step) {
+                Ok(outcome) => outcome,
+                Err(error) => {
+                    self.state = before;
+                    self.measure();
+                    return Err(error);
+                }
+            };
+            match outcome {
                 Attempt::Accepted(mut report, growth) => {
                     let wanted = step * growth;
                     // A step cut short by an output time does not set the pace of the next.
@@ -266,13 +280,15 @@ impl Simulation {
         let ledger = &self.state.ledger;
         let settled = SETTLED * ledger.dissipated.max(ledger.work.abs());
         let tolerance = self.parameters.step.tolerance;
+        // The first steps make up the whole ledger: they get no latitude.
+        let latitude = if ledger.accepted < STRICT_STEPS { 1.0 } else { LATITUDE };
         let clock = Instant::now();
         let transported = match self.transport(step, settled, &mut loads)? {
             Ok(dissipated) => dissipated,
             Err(reason) => return Ok(Attempt::Refused(reason)),
         };
         self.timings.transport += clock.elapsed().as_secs_f64();
-        if let Some(reason) = loads.refusal() {
+        if let Some(reason) = loads.refusal(latitude) {
             return Ok(Attempt::Refused(reason));
         }
 
@@ -300,7 +316,7 @@ impl Simulation {
         let clock = Instant::now();
         let mesh_velocity = self.mesh_velocity(&motion.velocity);
         loads.add(Reason::Travel, self.travel(&motion.velocity, &mesh_velocity, step));
-        if let Some(reason) = loads.refusal() {
+        if let Some(reason) = loads.refusal(latitude) {
             return Ok(Attempt::Refused(reason));
         }
         if !self.carry(&motion, step) {
@@ -325,7 +341,7 @@ impl Simulation {
         let found = (start.total() + work.with_mean_force - dissipated - self.energies.total()).abs() - given_back;
         let scale = tolerance * turnover.max(dissipated);
         loads.add(Reason::MotionAccuracy, found.min(DEFECT_FACTOR * defect) / scale.max(1e-300));
-        if let Some(reason) = loads.refusal() {
+        if let Some(reason) = loads.refusal(latitude) {
             return Ok(Attempt::Refused(reason));
         }
         let ledger = &mut self.state.ledger;
@@ -336,13 +352,8 @@ impl Simulation {
         ledger.mesh_credit += CREDIT * work.with_mean_force.abs();
         self.state.time += step;
         let speed = motion.velocity.iter().map(|v| v.norm()).fold(0.0, f64::max);
-        let geometry = &self.measured.geometry;
-        let unrest = self.state.time
-            * (0..motion.velocity.len())
-                .map(|i| {
-                    motion.velocity[i].dot(&geometry.vertex_normal[i]).abs() / geometry.vertex_area[i].sqrt()
-                })
-                .fold(0.0, f64::max);
+        let released = start.total() + work.with_mean_force - self.energies.total();
+        let unrest = self.unrest(released.abs() / step);
         let (growth, bounded_by) = loads.growth();
         let report = StepReport {
             step,
@@ -359,6 +370,26 @@ impl Simulation {
         self.state.velocity = motion.velocity;
         self.mesh_velocity = mesh_velocity;
         Ok(Attempt::Accepted(Box::new(report), growth))
+    }
+
+    /// See [`StepReport::unrest`]; `rate` is the energy released per time.
+    fn unrest(&self, rate: f64) -> f64 {
+        let ends = |path: &[(f64, Vec3)]| path.last().map_or(0.0, |p| p.0);
+        let loads = self.parameters.loads.iter().map(|load| match &load.pull {
+            Pull::Force(path) | Pull::Trap { path, .. } => ends(path),
+        });
+        let volume = match &self.parameters.volume {
+            VolumeCondition::Fixed(path) => path.last().map_or(0.0, |p| p.0),
+            _ => 0.0,
+        };
+        if self.state.time < loads.fold(volume, f64::max) {
+            return f64::INFINITY;
+        }
+        let ledger = &self.state.ledger;
+        let change = (self.energies.total() - ledger.start_energy).abs();
+        // Rounding of the energies must not pass for motion of a membrane that was at rest from the start.
+        let turned_over = change.max(ledger.work.abs()).max(1e-9 * ledger.start_energy.abs());
+        100.0 * rate * self.state.time / turned_over.max(f64::MIN_POSITIVE)
     }
 
     /// Work done on the membrane by loads and by a driven volume.

@@ -64,9 +64,6 @@ impl Default for Loads {
     }
 }
 
-/// A load beyond this is refused rather than corrected.
-const REFUSE: f64 = 2.5;
-
 impl Loads {
     /// Add a limit.
     pub fn add(&mut self, reason: Reason, load: f64) {
@@ -84,10 +81,10 @@ impl Loads {
             .fold((Reason::None, 0.0), |best, entry| if entry.1 > best.1 { entry } else { best })
     }
 
-    /// The reason to refuse the step, if any.
-    pub fn refusal(&self) -> Option<Reason> {
+    /// The reason to refuse the step: a load beyond `latitude`.
+    pub fn refusal(&self, latitude: f64) -> Option<Reason> {
         let (reason, load) = self.heaviest();
-        (load > REFUSE || load.is_nan()).then_some(reason)
+        (load > latitude || load.is_nan()).then_some(reason)
     }
 
     /// Factor for the next step and what sets it.

@@ -49,11 +49,13 @@ impl Simulation {
         if drop < -RISE * before.abs().max(self.energies.phase.abs()) {
             return Ok(Err(Reason::EnergyRise));
         }
-        loads.add(
-            Reason::DiffusionAccuracy,
-            (drop - dissipated).abs()
-                / (self.parameters.step.tolerance * dissipated.max(settled)).max(1e-300),
-        );
+        let defect = (drop - dissipated).abs();
+        let allowed = self.parameters.step.tolerance * dissipated.max(settled);
+        // Fields interpolated onto a changed mesh relax at once: mesh energy given back.
+        let given_back = (defect - allowed).clamp(0.0, self.state.ledger.mesh_debt.max(0.0));
+        self.state.ledger.mesh_debt -= given_back;
+        self.state.ledger.mesh_energy -= given_back;
+        loads.add(Reason::DiffusionAccuracy, (defect - given_back) / allowed.max(1e-300));
         Ok(Ok(dissipated))
     }
 

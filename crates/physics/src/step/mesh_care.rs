@@ -6,7 +6,8 @@
 
 use super::advance::Simulation;
 use super::connectivity::Connectivity;
-use super::rezone::{restore_volume, wrap};
+use super::fairing::{settle, touched};
+use super::rezone::wrap;
 use crate::PhysicsError;
 use crate::energy::Energies;
 use crate::energy::interface::triangle_gradient;
@@ -74,12 +75,20 @@ impl Simulation {
             ALLOWANCE * released.max(0.0) + self.state.ledger.mesh_credit
         };
         let before = self.energies.total();
-        if let Some(proposal) = self.propose(&care)? {
+        // What is too dear as a whole may be done in part.
+        let n = self.state.mesh.n_vertices();
+        for most_vertices in [care.most_vertices, (n + n / 50).min(care.most_vertices)] {
+            let Some(proposal) = self.propose(&care, most_vertices)? else {
+                break;
+            };
             let counts = proposal.counts;
             if self.adopt(proposal, allowance)? {
                 [report.flips, report.splits, report.collapses] = counts;
-            } else {
-                report.put_off = true;
+                break;
+            }
+            report.put_off = true;
+            if counts[1] + counts[2] == 0 {
+                break;
             }
         }
         let left = allowance - (self.energies.total() - before);
@@ -93,7 +102,7 @@ impl Simulation {
     }
 
     /// A better mesh, if there is something to do.
-    fn propose(&mut self, care: &MeshCare) -> Result<Option<Proposal>, PhysicsError> {
+    fn propose(&mut self, care: &MeshCare, most_vertices: usize) -> Result<Option<Proposal>, PhysicsError> {
         let data = || {
             let state = &self.state;
             let n = state.mesh.n_vertices();
@@ -116,7 +125,7 @@ impl Simulation {
                     split_above: LONGEST,
                     collapse_below: SHORTEST,
                     flip_tolerance: FLIP_TOLERANCE,
-                    max_vertices: care.most_vertices,
+                    max_vertices: most_vertices,
                     ..RemeshOptions::default()
                 };
                 let outcome = remesh(&self.state.mesh, &data(), &target, &options)?;
@@ -237,10 +246,18 @@ impl Simulation {
             }
             state.rim_normals = normals;
         }
-        let mut geometry = Geometry::new(&state.mesh);
-        if topology.is_closed() {
-            restore_volume(&mut state.mesh, &mut geometry, &topology.on_rim, self.measured.geometry.volume);
-        }
+        let chosen = touched(
+            &self.state.mesh,
+            &self.connectivity.topology,
+            &state.mesh,
+            &topology,
+            proposal.old_to_new.as_deref(),
+        );
+        let present = &self.measured.geometry;
+        let drawn =
+            settle(&self.parameters, &topology, &mut state, &chosen, present.volume, present.total_area);
+        state.ledger.lipid_drawn += drawn;
+        let geometry = Geometry::new(&state.mesh);
         wrap(&mut state.mesh);
         for (load, parameters) in state.loads.iter_mut().zip(&self.parameters.loads) {
             let weights =

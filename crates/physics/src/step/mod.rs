@@ -6,6 +6,7 @@ pub mod borders;
 pub mod connectivity;
 pub mod control;
 pub mod exchange;
+mod fairing;
 pub mod forces;
 pub mod mechanics;
 pub mod memory;

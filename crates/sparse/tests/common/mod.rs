@@ -128,6 +128,31 @@ impl Builder {
 /// Random quasi-definite matrix with the couplings of a membrane step: velocities over two rings,
 /// tension with the velocities of one ring, tension diagonal −`compressibility`.
 pub fn membrane_matrix(mesh: &Mesh, compressibility: f64, seed: u64) -> (Pattern, Vec<f64>) {
+    membrane_builder(mesh, 1.0, compressibility, seed).finish()
+}
+
+/// As [`membrane_matrix`], with the two-ring part scaled by the time `step`, a viscous one-ring
+/// part that is not, and the tension diagonal of area / (`modulus` · `step`).
+pub fn step_matrix(mesh: &Mesh, modulus: f64, step: f64, seed: u64) -> (Pattern, Vec<f64>) {
+    let area = 4.0 * std::f64::consts::PI / mesh.points.len() as f64;
+    let mut a = membrane_builder(mesh, step, area / (modulus * step), seed);
+    let mut rng = ChaCha8Rng::seed_from_u64(seed + 1);
+    for triangle in &mesh.triangles {
+        let row: Vec<(usize, f64)> = triangle
+            .iter()
+            .flat_map(|&k| [4 * k, 4 * k + 1, 4 * k + 2])
+            .map(|unknown| (unknown, rng.random_range(-1.0..1.0)))
+            .collect();
+        for (p, &(i, x)) in row.iter().enumerate() {
+            for &(j, y) in &row[..=p] {
+                a.add(i, j, x * y);
+            }
+        }
+    }
+    a.finish()
+}
+
+fn membrane_builder(mesh: &Mesh, bending: f64, compressibility: f64, seed: u64) -> Builder {
     let mut rng = ChaCha8Rng::seed_from_u64(seed);
     let mut random = || rng.random_range(-1.0..1.0);
     let mut a = Builder::new(4 * mesh.points.len());
@@ -141,7 +166,7 @@ pub fn membrane_matrix(mesh: &Mesh, compressibility: f64, seed: u64) -> (Pattern
                 .collect();
             for (p, &(i, x)) in row.iter().enumerate() {
                 for &(j, y) in &row[..=p] {
-                    a.add(i, j, x * y);
+                    a.add(i, j, bending * x * y);
                 }
             }
         }
@@ -160,7 +185,7 @@ pub fn membrane_matrix(mesh: &Mesh, compressibility: f64, seed: u64) -> (Pattern
             a.add(tension, 4 * k + 3, 0.05 * compressibility);
         }
     }
-    a.finish()
+    a
 }
 
 /// Positive definite one-ring matrix with `block` unknowns per vertex.

@@ -94,6 +94,7 @@ pub(super) fn candidates(
 ///
 /// Fronts from a point of a wide tube may go once round the period before they go round the tube.
 pub(super) fn cross_sections(mesh: &Mesh, topology: &Topology, period: f64) -> Vec<Candidate> {
+    // Two per edge: saddle points of the mesh hold a curve up before it finds a waist much farther away.
     let count = (2.0 * period / mesh.mean_edge_length()).ceil().max(8.0) as usize;
     let sections: Vec<Option<(f64, Loop)>> = (0..count)
         .map(|k| {
@@ -103,7 +104,7 @@ pub(super) fn cross_sections(mesh: &Mesh, topology: &Topology, period: f64) -> V
                 .iter()
                 .map(|x| mesh.nearest_image(Vec3::new(0.0, 0.0, x.z - level)).z)
                 .collect();
-            let mut seen = HashSet::new();
+            let mut seen: HashSet<u32> = HashSet::new();
             let mut longest: Option<(f64, Loop)> = None;
             for h in 0..topology.twin.len() as u32 {
                 let (a, b) = ends(topology, h);
@@ -124,8 +125,15 @@ pub(super) fn cross_sections(mesh: &Mesh, topology: &Topology, period: f64) -> V
         })
         .collect();
     let length = |k: usize| sections[k % count].as_ref().map_or(f64::INFINITY, |(length, _)| *length);
+    // Going either way from a shortest section, lengths grow by the ridge before any is shorter.
+    let ridge = |k: usize, step: usize| {
+        (1..count)
+            .map(|d| length(k + d * step))
+            .find(|next| *next < length(k) || *next >= RIDGE * length(k))
+            .is_some_and(|next| next >= RIDGE * length(k))
+    };
     let mut chosen: Vec<(f64, Loop)> = (0..count)
-        .filter(|&k| (1..=3).all(|d| length(k) <= length(k + d) && length(k) <= length(k + count - d)))
+        .filter(|&k| ridge(k, 1) && ridge(k, count - 1))
         .filter_map(|k| sections[k].clone())
         .collect();
     chosen.sort_by(|a, b| a.0.total_cmp(&b.0));
