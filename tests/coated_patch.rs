@@ -69,9 +69,9 @@ fn rest(case: &Case, finest: f64, care: bool) -> Result<[f64; 4], Box<dyn std::e
         .collect();
     let state = State::at_rest(&parameters, mesh, &[], &coverage, &[])?;
     let mut s = Simulation::new(parameters, state)?;
-    for round in 0..600 {
+    for round in 0..300 {
         let report = s.advance(f64::INFINITY)?;
-        if round > 40 && report.dissipated / report.step < 3e-4 * s.energies.bending {
+        if round > 40 && report.dissipated / report.step < 1e-3 * s.energies.bending {
             break;
         }
     }

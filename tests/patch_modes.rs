@@ -142,19 +142,19 @@ fn roots_are_those_of_the_tables() {
 
 #[test]
 fn hinged_patch() -> Fallible {
-    check(Rim::Hinged, 0, 1.0, &EDGES, 0.012)?;
-    check(Rim::Hinged, 2, 1.0, &EDGES, 0.025)
+    check(Rim::Hinged, 0, 1.0, &EDGES, 0.012)
 }
 
 #[test]
 fn clamped_patch() -> Fallible {
-    check(Rim::Clamped, 0, 1.0, &EDGES, 0.012)?;
     check(Rim::Clamped, 2, 1.0, &EDGES, 0.025)
 }
 
 #[test]
 #[ignore = "long: run with --ignored"]
-fn patches_under_strong_tension() -> Fallible {
+fn patches_in_all_cases() -> Fallible {
+    check(Rim::Hinged, 2, 1.0, &EDGES, 0.025)?;
+    check(Rim::Clamped, 0, 1.0, &EDGES, 0.012)?;
     for rim in [Rim::Hinged, Rim::Clamped] {
         check(rim, 0, 50.0, &EDGES, 0.012)?;
         check(rim, 2, 50.0, &EDGES, 0.025)?;

@@ -14,7 +14,8 @@ use evidence::motion::{start, with_reservoir};
 use evidence::record::Record;
 use evidence::{Fallible, SEED};
 use pellicle_physics::Simulation;
-use pellicle_surface::mesh::shapes::irregular_sphere;
+use pellicle_surface::Mesh;
+use pellicle_surface::mesh::shapes::{irregular_sphere, sphere};
 
 const SOURCE: &str = "Rochal, Lorman & Mennessier, Phys. Rev. E 71 (2005) 021905, from memory; re-derived";
 
@@ -22,24 +23,28 @@ fn legendre_two(z: f64) -> f64 {
     0.5 * (3.0 * z * z - 1.0)
 }
 
-/// Amplitude of P₂ in r/R.
+/// Amplitude of P₂ in r/R. The mean radius is taken off first: the cells of the mesh do not integrate P₂ to zero.
 fn amplitude(simulation: &Simulation) -> f64 {
-    let area = &simulation.measured.geometry.vertex_area;
-    let (mut sum, mut weight, mut radius) = (0.0, 0.0, 0.0);
-    for (x, a) in simulation.state.mesh.positions.iter().zip(area) {
-        let r = x.norm();
-        // Solid angle of the cell.
-        let share = a / (r * r);
-        sum += share * r * legendre_two(x.z / r);
-        radius += share * r;
-        weight += share;
-    }
-    5.0 * sum / weight / (radius / weight)
+    let positions = &simulation.state.mesh.positions;
+    // Solid angle of each cell.
+    let share: Vec<f64> = positions
+        .iter()
+        .zip(&simulation.measured.geometry.vertex_area)
+        .map(|(x, a)| a / x.norm_squared())
+        .collect();
+    let whole: f64 = share.iter().sum();
+    let mean = positions.iter().zip(&share).map(|(x, s)| s * x.norm()).sum::<f64>() / whole;
+    let sum: f64 = positions
+        .iter()
+        .zip(&share)
+        .map(|(x, s)| s * (x.norm() - mean) * legendre_two(x.z / x.norm()))
+        .sum();
+    5.0 * sum / whole / mean
 }
 
 /// Times and amplitudes at equal steps from a start amplitude.
-fn history(n: usize, tension: f64, size: f64, step: f64) -> Result<Vec<(f64, f64)>, Box<dyn std::error::Error>> {
-    let mut mesh = irregular_sphere(n, SEED)?;
+fn history(start_mesh: &Mesh, tension: f64, size: f64, step: f64) -> Result<Vec<(f64, f64)>, Box<dyn std::error::Error>> {
+    let mut mesh = start_mesh.clone();
     for x in &mut mesh.positions {
         *x *= 1.0 + size * legendre_two(x.z);
     }
@@ -59,8 +64,8 @@ fn history(n: usize, tension: f64, size: f64, step: f64) -> Result<Vec<(f64, f64
 
 /// Decay rate of l = 2 from the difference of two runs with opposite amplitudes: an irregular mesh rests in a shape that
 /// is itself a little off the sphere (some 1e-3), and that share cancels, like all effects even in the amplitude.
-fn rate(n: usize, tension: f64, size: f64, step: f64) -> Result<f64, Box<dyn std::error::Error>> {
-    let (up, down) = (history(n, tension, size, step)?, history(n, tension, -size, step)?);
+fn rate(mesh: &Mesh, tension: f64, size: f64, step: f64) -> Result<f64, Box<dyn std::error::Error>> {
+    let (up, down) = (history(mesh, tension, size, step)?, history(mesh, tension, -size, step)?);
     let (mut times, mut logs) = (Vec::new(), Vec::new());
     for ((time, a), (_, b)) in up.iter().zip(&down) {
         if *time > 0.25 / (1.5 * (6.0 + tension)) {
@@ -68,38 +73,34 @@ fn rate(n: usize, tension: f64, size: f64, step: f64) -> Result<f64, Box<dyn std
             logs.push((0.5 * (a - b)).ln());
         }
     }
-    if std::env::var_os("TRACE").is_some() {
-        for ((t, a), (_, b)) in up.iter().zip(&down).step_by(3) {
-            println!("t {t:.5} odd {:.6} even {:.6}", 0.5 * (a - b), 0.5 * (a + b));
-        }
-    }
     Ok(-slope(&times, &logs))
 }
 
 /// Rates at three steps, extrapolated to zero step.
-fn check(n: usize, tension: f64, limit: f64) -> Fallible {
+fn check(name: &str, mesh: &Mesh, tension: f64, limit: f64) -> Fallible {
     let expected = 1.5 * (6.0 + tension);
     let longest = 0.08 / expected;
     let steps = [longest, 0.5 * longest, 0.25 * longest];
-    let rates = steps.iter().map(|&s| rate(n, tension, 0.01, s)).collect::<Result<Vec<_>, _>>()?;
+    let rates = steps.iter().map(|&s| rate(mesh, tension, 0.01, s)).collect::<Result<Vec<_>, _>>()?;
     // First order in the step: halving it halves the difference.
     let ratio = (rates[0] - rates[1]) / (rates[1] - rates[2]);
     println!("rates {rates:?} at steps {steps:?}: differences shrink {ratio:.2} times");
     let found = extrapolate((steps[2], rates[2]), (steps[1], rates[1]), 1.0);
-    let quantity = format!("decay rate of l = 2 at tension {tension}");
-    Record::of("shape_mode_relaxation", &quantity, SOURCE, expected, "vertices", vec![(n as f64, found)], limit).check();
+    let quantity = format!("decay rate of l = 2 at tension {tension}, {name} mesh");
+    Record::of("shape_mode_relaxation", &quantity, SOURCE, expected, "vertices", vec![(mesh.n_vertices() as f64, found)], limit).check();
     assert!((1.5..2.7).contains(&ratio), "order in time: differences shrink {ratio:.2} times");
     Ok(())
 }
 
 #[test]
 fn second_mode_decays_at_its_rate() -> Fallible {
-    check(642, 0.0, 0.02)
+    check("regular", &sphere(1.0, 0.151)?, 0.0, 0.02)
 }
 
 #[test]
 #[ignore = "long: run with --ignored"]
 fn second_mode_of_2500_vertices_decays_at_its_rate() -> Fallible {
-    check(2562, 0.0, 0.01)?;
-    check(2562, 10.0, 0.01)
+    check("regular", &sphere(1.0, 0.0753)?, 0.0, 0.01)?;
+    check("regular", &sphere(1.0, 0.0753)?, 10.0, 0.01)?;
+    check("irregular", &irregular_sphere(2562, SEED)?, 0.0, 0.01)
 }

@@ -93,7 +93,7 @@ fn draw(heights: &[f64]) -> Result<Vec<(f64, f64)>, Box<dyn std::error::Error>> 
         ends.push(time);
         last = height;
     }
-    let parameters = Parameters {
+    let mut parameters = Parameters {
         area: AreaCondition::Reservoir(SIGMA),
         rim: Some(Rim::Clamped),
         friction: 1e-2,
@@ -112,6 +112,10 @@ fn draw(heights: &[f64]) -> Result<Vec<(f64, f64)>, Box<dyn std::error::Error>> 
         }),
         ..Parameters::bare(1.0, 1.0, 2e5)
     };
+    // A flat patch has hardly any drag against normal motion, so that its first steps cannot balance their dissipation;
+    // what is read here is at rest, where accuracy on the way does not matter.
+    parameters.step.tolerance = 3.0;
+    parameters.step.first = 1e-6;
     let state = State::at_rest(&parameters, mesh, &[], &[], &[])?;
     let mut s = Simulation::new(parameters, state)?;
     let mut found = Vec::new();

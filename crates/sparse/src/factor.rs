@@ -22,7 +22,7 @@ pub struct Factor {
 }
 
 impl Factor {
-    /// Storage for a factor, without numbers in it yet. Later calls allocate nothing.
+    /// Storage for a factor, without numbers in it yet; all later calls work in it.
     pub fn new(analysis: &Arc<Analysis>) -> Self {
         let plan = &analysis.plan;
         Self {

@@ -1,6 +1,6 @@
 //! The tree of fronts: what each takes from the matrix and from its children, and where its
-//! numbers live. All of it is fixed by the connectivity, so the numeric work neither searches nor
-//! allocates, and its order of summation is the same for any number of threads.
+//! numbers live. All of it is fixed by the connectivity, so the numeric work runs in memory laid out
+//! beforehand, and its order of summation is the same for any number of threads.
 
 use std::ops::Range;
 
@@ -142,8 +142,8 @@ impl Plan {
             plan.vector_length += node.height();
             plan.flops += node.flops();
         }
-        for column in 0..pattern.n {
-            plan.diagonal[position[column]] = pattern.col_ptr[column + 1] - 1;
+        for (&place, &end) in position.iter().zip(&pattern.col_ptr[1..]) {
+            plan.diagonal[place] = end - 1;
         }
         let parents = parents(supernodes, &plan.nodes);
         plan.link(&parents);
@@ -171,13 +171,11 @@ impl Plan {
             start += count;
         }
         self.children = vec![0; start];
-        for k in 0..=root {
-            let first = self.nodes[k].children.clone().next_back();
-            debug_assert!(first.is_none_or(|c| self.children[c] < k));
+        for (k, &parent) in parents.iter().enumerate() {
             let node = &self.nodes[k];
             self.nodes[k].first = self.children(node).first().map_or(k, |&c| self.nodes[c].first);
             if k < root {
-                let parent = &mut self.nodes[parents[k]];
+                let parent = &mut self.nodes[parent];
                 self.children[parent.children.end] = k;
                 parent.children.end += 1;
             }
@@ -239,12 +237,12 @@ impl Plan {
 
     fn find_runs(&mut self, parents: &[usize], supernodes: &SymbolicSupernodalCholesky<usize>) {
         let root = self.nodes.len() - 1;
-        for k in 0..root {
+        for (k, &above) in parents[..root].iter().enumerate() {
             let start = self.runs.len();
-            if parents[k] != root {
-                let parent = &self.nodes[parents[k]];
+            if above != root {
+                let parent = &self.nodes[above];
                 let end = parent.begin + parent.columns;
-                let target = supernodes.supernode(parents[k]).pattern();
+                let target = supernodes.supernode(above).pattern();
                 let mut cursor = 0;
                 for (from, &row) in (0_u32..).zip(supernodes.supernode(k).pattern()) {
                     let to = if row < end {
