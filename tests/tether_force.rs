@@ -81,7 +81,7 @@ fn draw(heights: &[f64]) -> Result<Vec<(f64, f64)>, Box<dyn std::error::Error>> 
     let finest = PATCH / 1.5;
     let mesh = disc_graded(1.0, &|r| (finest + 0.2 * (r - 3.0 * PATCH).max(0.0)).min(0.12))?;
     println!("{} vertices at the start", mesh.n_vertices());
-    let (speed, hold) = (2.0, 0.06);
+    let (speed, hold) = (2.0, 0.08);
     let mut path = vec![(0.0, Vec3::zeros())];
     let mut ends = Vec::new();
     let (mut time, mut last) = (0.0, 0.0);
@@ -106,7 +106,7 @@ fn draw(heights: &[f64]) -> Result<Vec<(f64, f64)>, Box<dyn std::error::Error>> 
             adapt: true,
             edge: 0.12,
             shortest: 0.004,
-            edges_per_radius: 2.5,
+            edges_per_radius: 3.5,
             edges_per_interface: 4.0,
             most_vertices: 4000,
         }),

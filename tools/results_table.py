@@ -96,7 +96,7 @@ def row(record):
     return "| " + " | ".join(cell.replace("|", "\\|") for cell in cells) + " |"
 
 
-def table(records, failed, date):
+def table(records, failed, date, note):
     """The whole page."""
     newest = {}
     for record in records:
@@ -109,6 +109,8 @@ def table(records, failed, date):
         "Each line: what is measured, where the expected value comes from, the value and its error at each level of",
         "refinement, the observed order of convergence, and the limit on the last error.",
     ]
+    if note:
+        lines += ["", note]
     if failed:
         lines += ["", "Tests that failed in this run:", ""] + [f"- `{name}`" for name in failed]
     laws = sorted({record["law"] for record in newest.values()})
@@ -137,6 +139,7 @@ def main():
     parser.add_argument("--run", action="store_true", help="run the checks first")
     parser.add_argument("--short", action="store_true", help="with --run: leave the long checks out")
     parser.add_argument("--out", default=ROOT / "tests" / "RESULTS.md", help="where to write (default: tests/RESULTS.md)")
+    parser.add_argument("--note", default="", help="a remark to put at the top of the page")
     options = parser.parse_args()
     if options.run == bool(options.records):
         parser.error("give either --run or a file of records")
@@ -150,7 +153,7 @@ def main():
         path = Path(options.records)
     if not path.exists():
         sys.exit(f"{path}: no records")
-    text = table(read(path), failed, datetime.date.today().isoformat())
+    text = table(read(path), failed, datetime.date.today().isoformat(), options.note)
     Path(options.out).write_text(text, encoding="utf-8")
     print(f"wrote {options.out}")
 

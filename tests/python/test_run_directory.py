@@ -23,7 +23,7 @@ seed = 2
 [surface]
 shape = "ellipsoid"
 semi_axes = ["1 um", "1 um", "1.6 um"]
-edge_length = "0.25 um"
+edge_length = "0.18 um"
 
 [membrane]
 bending_rigidity = "20 kBT"
@@ -31,10 +31,10 @@ shear_viscosity = "1e-9 N s/m"
 
 [composition]
 line_tension = "0.2 pN"
-interface_width = "0.3 um"
+interface_width = "0.36 um"
 diffusion_constant = "20 um^2/s"
 mean = 0.4
-noise = 0.05
+noise = 0.02
 
 [time]
 end = "4 ms"

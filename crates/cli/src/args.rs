@@ -65,7 +65,15 @@ Examples:
 A resumed run writes the same bytes as one that was never interrupted. Rows and frames later than the checkpoint
 are dropped and computed again.")]
     Resume(Resume),
-    /// Say what a scenario means, and what is doubtful about it, without running it.
+    /// Say what a scenario means, what matters in it, and what is doubtful about it, without running it.
+    #[command(after_long_help = "\
+Examples:
+  pellicle check vesicle.toml
+  pellicle check vesicle.toml --set composition.interface_width=\"0.3 um\"
+  pellicle check vesicle.toml --json | jq '.numbers[] | {name, value}'
+
+Prints the dimensionless numbers of the case with what follows from them, whether the mesh resolves what it shall
+show, what the run will take of memory and time, and values that no lipid bilayer has (as warnings).")]
     Check(Check),
     /// Print the JSON schema of scenarios, for editors that complete and check as you type.
     Schema,
@@ -126,6 +134,9 @@ pub struct Check {
     /// Print the scenario with every default filled in, too.
     #[arg(long)]
     pub resolved: bool,
+    /// Print one JSON object, warnings included.
+    #[arg(long)]
+    pub json: bool,
 }
 
 /// How a run goes and what it shows.

@@ -10,7 +10,7 @@ use crate::dissipation::tension_stabilisation;
 use crate::energy::total::Measured;
 use crate::energy::{Energies, interface, stretching};
 use crate::parameters::{AreaCondition, Parameters, Pull, VolumeCondition, along_path};
-use crate::state::{State, pull_at};
+use crate::state::{Ledger, State, pull_at};
 use crate::transport::diffusion::DiffusionSolver;
 use pellicle_surface::Vec3;
 use std::time::Instant;
@@ -126,22 +126,25 @@ impl Simulation {
         };
         simulation.measure();
         if simulation.state.ledger.accepted == 0 && simulation.state.ledger.start_energy == 0.0 {
+            // Neither the mesh's adaptation to the start shape nor the lipids' is part of what happens.
+            simulation.care(f64::INFINITY)?;
+            simulation.state.ledger = Ledger::default();
             simulation.settle_lipids()?;
             simulation.state.ledger.start_energy = simulation.energies.total();
         }
         Ok(simulation)
     }
 
-    /// Give the lipids the amount that is at ease with the mean tension of the start shape. Otherwise the first step
-    /// would stretch or compress the whole membrane at once, and the energy of that would spoil the ledger.
+    /// Give the lipids the density that is at ease with the tension of the start shape. Otherwise the first step would
+    /// stretch or compress the membrane at once, and the energy of that would spoil the ledger.
     fn settle_lipids(&mut self) -> Result<(), PhysicsError> {
-        if self.parameters.area != AreaCondition::Lipid {
-            return Ok(());
-        }
         let modulus = self.parameters.area_compression_modulus;
         let (composition, coverage, marker) =
             (self.state.composition(), self.state.coverage(), self.state.marker());
         let area = self.measured.geometry.total_area;
+        let mean = |tension: &[f64], areas: &[f64]| -> f64 {
+            tension.iter().zip(areas).map(|(t, a)| t * a).sum::<f64>() / area
+        };
         for _ in 0..SETTLING_ROUNDS {
             let motion = mechanics::solve(
                 &self.parameters,
@@ -151,15 +154,16 @@ impl Simulation {
                 self.parameters.step.first,
                 &mut self.timings,
             )?;
-            let mean = |tension: &[f64]| -> f64 {
-                tension.iter().zip(&self.measured.geometry.vertex_area).map(|(t, a)| t * a).sum::<f64>() / area
-            };
-            let (new, old) = (mean(&motion.tension), mean(&self.state.tension));
-            // Half of K_A at most: a tension beyond that is not one a membrane could bear at the start.
-            let new = new.clamp(-0.5 * modulus, 0.5 * modulus);
+            let areas = &self.measured.geometry.vertex_area;
+            let (new, old) = (mean(&motion.tension, areas), mean(&self.state.tension, areas));
+            // Half of K_A at most: a tension beyond that is not one a membrane could bear at the start. A rough mesh
+            // has local tensions that say nothing about the membrane.
+            let middle = new.clamp(-0.5 * modulus, 0.5 * modulus);
+            let local = |t: f64| middle + (t - new).clamp(-0.01 * modulus, 0.01 * modulus);
             let State { lipid, composition_amount, bound_amount, marker_amount, tension, .. } = &mut self.state;
-            for (m, a) in lipid.iter_mut().zip(&self.measured.geometry.vertex_area) {
-                *m = a / (1.0 + new / modulus);
+            for ((m, a), (t, solved)) in lipid.iter_mut().zip(areas).zip(tension.iter_mut().zip(&motion.tension)) {
+                *t = local(*solved);
+                *m = a / (1.0 + *t / modulus);
             }
             for (amount, field) in
                 [(composition_amount, &composition), (bound_amount, &coverage), (marker_amount, &marker)]
@@ -168,7 +172,7 @@ impl Simulation {
                     *n = f * m;
                 }
             }
-            tension.fill(new);
+            self.state.pressure = motion.pressure;
             self.measure();
             if (new - old).abs() <= 1e-3 * (new.abs() + self.parameters.bending_rigidity.at_zero / area) {
                 break;

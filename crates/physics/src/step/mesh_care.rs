@@ -171,9 +171,9 @@ impl Simulation {
         if let Some(phases) = &self.parameters.phases {
             let across = 2.0 * phases.interface_width / care.edges_per_interface;
             for (t, corners) in mesh.triangles.iter().enumerate() {
-                // tanh(x/ε) has the slope 1/ε in its middle; a fifth of it is where u = ±0.9.
+                // tanh(x/ε) has the slope 1/ε in its middle; a third of it is where u = ±0.8. Noise must stay below.
                 let slope = triangle_gradient(geometry, t, corners, &self.measured.order).norm();
-                if slope * phases.interface_width > 0.2 {
+                if slope * phases.interface_width > 0.35 {
                     for &v in corners {
                         let w = &mut wanted[v as usize];
                         *w = w.min(across);
