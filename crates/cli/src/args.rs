@@ -11,6 +11,7 @@ Examples:
                                                   the same with one number changed
   pellicle resume trial                           go on after Ctrl-C, a crash or a power cut
   pellicle resume trial --until \"20 s\"            go on beyond the time it was planned for
+  pellicle measure cell.ply --unit um             area, volume, curvature and faults of a surface
   pellicle schema > scenario.schema.json          everything a scenario may say, for editors
 
 Results of a run: series.csv opens in any spreadsheet or with pandas, fields.pvd in any viewer of VTK files,
@@ -75,6 +76,16 @@ Examples:
 Prints the dimensionless numbers of the case with what follows from them, whether the mesh resolves what it shall
 show, what the run will take of memory and time, and values that no lipid bilayer has (as warnings).")]
     Check(Check),
+    /// Measure surfaces from files: area, volume, bending energy, curvature, necks, faults of the mesh.
+    #[command(after_long_help = "\
+Examples:
+  pellicle measure cell.ply
+  pellicle measure cell.stl --unit um --out cell.vtu     lengths in metres; curvature for a viewer
+  pellicle measure run/surface_*.vtu --csv > shapes.csv   one row per frame
+
+Reads PLY, OBJ, STL, VTK, VTU and VTP. Lengths are in the unit of the file unless --unit says what it is. A
+mesh that cannot be measured is refused with what is wrong and where (exit code 2).")]
+    Measure(Measure),
     /// Print the JSON schema of scenarios, for editors that complete and check as you type.
     Schema,
     /// Print the completions of a shell.
@@ -137,6 +148,26 @@ pub struct Check {
     /// Print one JSON object, warnings included.
     #[arg(long)]
     pub json: bool,
+}
+
+/// Arguments of `measure`.
+#[derive(Debug, Args)]
+pub struct Measure {
+    /// Surfaces: PLY, OBJ, STL, VTK, VTU or VTP.
+    #[arg(value_name = "FILE", value_hint = ValueHint::FilePath, required = true)]
+    pub files: Vec<PathBuf>,
+    /// The files' unit of length, as in um or "0.1 um"; results are then in metres.
+    #[arg(long, value_name = "UNIT")]
+    pub unit: Option<String>,
+    /// Print a JSON list with an object per file.
+    #[arg(long, conflicts_with = "csv")]
+    pub json: bool,
+    /// Print a table with a row per file.
+    #[arg(long)]
+    pub csv: bool,
+    /// Write the surface with its curvature to a VTU file.
+    #[arg(long, short, value_name = "FILE", value_hint = ValueHint::FilePath)]
+    pub out: Option<PathBuf>,
 }
 
 /// How a run goes and what it shows.

@@ -38,6 +38,7 @@ fn dispatch(arguments: &Arguments) -> Result<u8, Failure> {
         Command::Run(run) => commands::run::run(run),
         Command::Resume(resume) => commands::resume::run(resume),
         Command::Check(check) => commands::check::run(check),
+        Command::Measure(measure) => commands::measure::run(measure),
         Command::Schema => commands::schema::run(),
         Command::Completions { shell } => commands::completions::run(*shell),
     }

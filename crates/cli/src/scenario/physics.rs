@@ -268,6 +268,14 @@ pub fn parameters(
             most_vertices: values.whole("mesh.most_vertices").unwrap_or(0).max(0) as usize,
         }),
     };
+    if parameters.rim.is_some() && parameters.friction == 0.0 {
+        warnings.push(
+            "nothing resists normal motion of a flat membrane but its surroundings, and there is no [surroundings]; \
+             give for example bulk_viscosity = \"1 mPa s\" and screening_length = \"100 nm\" if the first steps \
+             are refused"
+                .to_owned(),
+        );
+    }
     sanity(values, &parameters, &geometry, warnings)?;
     parameters.validate().map_err(|error| {
         Problem::new(

@@ -9,7 +9,7 @@ use crate::PhysicsError;
 use crate::dissipation::tension_stabilisation;
 use crate::energy::total::Measured;
 use crate::energy::{Energies, interface, stretching};
-use crate::parameters::{AreaCondition, Parameters, Pull, VolumeCondition, along_path};
+use crate::parameters::{Parameters, Pull, VolumeCondition, along_path};
 use crate::state::{Ledger, State, pull_at};
 use crate::transport::diffusion::DiffusionSolver;
 use pellicle_surface::Vec3;
@@ -79,8 +79,8 @@ const CREDIT: f64 = 0.02;
 /// Rounds of [`Simulation::settle_lipids`].
 const SETTLING_ROUNDS: usize = 8;
 
-/// Work during a step: with the force at its end, by which the implicit step can only lose energy; and with the mean
-/// of the forces at its ends, which is exact to second order and goes into the ledger.
+/// Work during a step: with the force at its end, by which the implicit step can only lose energy; and with the force
+/// along the way (the mean of the ends where it grows or falls steadily), which goes into the ledger.
 #[derive(Clone, Copy, Debug, Default)]
 struct Work {
     with_final_force: f64,
@@ -310,7 +310,14 @@ impl Simulation {
             }
             Err(error) => return Err(error),
         };
-        let work = self.work(&motion, step);
+        let mut work = self.work(&motion, step);
+        // The exact balance of the implicit step is ΔF = work with the final force − dissipation − lag. Against an elastic
+        // membrane the force grows along the way and the lag is half of its growth; against viscous drag the force
+        // jumps at once and there is no lag.
+        let growth = work.with_final_force - work.with_mean_force;
+        if growth > 0.0 {
+            work.with_mean_force = work.with_final_force - motion.lag.min(growth);
+        }
         // What the step will leave unaccounted for: half of it is the growth of the load's own force.
         let defect = (motion.lag - (work.with_final_force - work.with_mean_force)).abs();
         let turnover = motion.dissipated.max(work.with_mean_force.abs()).max(settled);

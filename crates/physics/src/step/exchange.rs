@@ -10,6 +10,9 @@ use crate::transport::diffusion::{DiffusionInput, DiffusionSolver};
 
 /// Largest change of composition (in u = 2φ − 1) aimed at per step.
 const COMPOSITION_CHANGE: f64 = 0.12;
+/// Linearised diffusion and remapping may overshoot an empty or full membrane by this much; their sums stay exact,
+/// which clipping would spoil.
+const OVERSHOOT: f64 = 1e-4;
 /// Largest change of coverage aimed at per step.
 const COVERAGE_CHANGE: f64 = 0.1;
 
@@ -176,7 +179,7 @@ impl Simulation {
             mobility: &mobility,
             step,
         })?;
-        if diffused.field.iter().any(|t| !(0.0..=1.0).contains(t)) {
+        if diffused.field.iter().any(|t| !(-OVERSHOOT..=1.0 + OVERSHOOT).contains(t)) {
             return Ok(None);
         }
         let change = diffused

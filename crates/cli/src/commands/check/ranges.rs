@@ -72,7 +72,7 @@ pub fn compare(case: &Case<'_>, default_compression: bool) -> Findings {
         if compression < range.low {
             findings.notes.push(format!(
                 "area compression modulus {} is the program's choice, softer than lipids (0.2 to 0.3 N/m: \
-                 {COMPRESSION_SOURCE}); strains stay below 1e-3 all the same",
+                 {COMPRESSION_SOURCE}); strains stay at 1e-3 or less all the same",
                 per_length(compression)
             ));
         }

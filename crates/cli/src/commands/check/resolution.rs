@@ -2,7 +2,6 @@
 
 use super::numbers::Case;
 use pellicle_physics::parameters::BindingRegion;
-use pellicle_surface::Vec3;
 
 /// Fewest edges per radius of a load patch: below, its weights depend on where vertices happen to lie.
 const EDGES_PER_PATCH: f64 = 1.5;
@@ -95,7 +94,8 @@ pub fn needs(case: &Case<'_>) -> Vec<Need> {
     if curvature > 0.0 {
         let marked = parameters.protein.as_ref().is_some_and(|p| p.region == BindingRegion::Marked);
         let length = 2.0 / curvature;
-        let on_spot = |v: usize| !marked || state.marker.get(v).is_none_or(|mark| *mark > 0.5);
+        let marker = state.marker();
+        let on_spot = |v: usize| !marked || marker.get(v).is_none_or(|mark| *mark > 0.5);
         let at_start = length / mean(&on_spot);
         found.push(Need {
             key: "coat_radius",
@@ -107,7 +107,7 @@ pub fn needs(case: &Case<'_>) -> Vec<Need> {
         });
     }
     for load in &parameters.loads {
-        let distance = |v: usize| -> f64 { (state.mesh.positions[v] - Vec3::from(load.centre)).norm() };
+        let distance = |v: usize| -> f64 { (state.mesh.positions[v] - load.centre).norm() };
         let near = |v: usize| distance(v) < 2.0 * load.patch_radius;
         let edge = mean(&near);
         let at_start = load.patch_radius / edge;
