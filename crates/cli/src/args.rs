@@ -12,6 +12,7 @@ Examples:
   pellicle resume trial                           go on after Ctrl-C, a crash or a power cut
   pellicle resume trial --until \"20 s\"            go on beyond the time it was planned for
   pellicle measure cell.ply --unit um             area, volume, curvature and faults of a surface
+  pellicle report vesicle-run                     plots and pictures of a run as one HTML page
   pellicle schema > scenario.schema.json          everything a scenario may say, for editors
 
 Results of a run: series.csv opens in any spreadsheet or with pandas, fields.pvd in any viewer of VTK files,
@@ -73,8 +74,9 @@ Examples:
   pellicle check vesicle.toml --set composition.interface_width=\"0.3 um\"
   pellicle check vesicle.toml --json | jq '.numbers[] | {name, value}'
 
-Prints the dimensionless numbers of the case with what follows from them, whether the mesh resolves what it shall
-show, what the run will take of memory and time, and values that no lipid bilayer has (as warnings).")]
+Prints the dimensionless numbers of the case with what follows from them, whether the mesh resolves
+what it shall show, what the run will take of memory and time, and values that no lipid bilayer has
+(as warnings).")]
     Check(Check),
     /// Measure surfaces from files: area, volume, bending energy, curvature, necks, faults of the mesh.
     #[command(after_long_help = "\
@@ -83,9 +85,17 @@ Examples:
   pellicle measure cell.stl --unit um --out cell.vtu     lengths in metres; curvature for a viewer
   pellicle measure run/surface_*.vtu --csv > shapes.csv   one row per frame
 
-Reads PLY, OBJ, STL, VTK, VTU and VTP. Lengths are in the unit of the file unless --unit says what it is. A
-mesh that cannot be measured is refused with what is wrong and where (exit code 2).")]
+Reads PLY, OBJ, STL, VTK, VTU and VTP. Lengths are in the unit of the file unless --unit says what
+it is. A mesh that cannot be measured is refused with what is wrong and where (exit code 2).")]
     Measure(Measure),
+    /// Make one page of plots and pictures of a run, or of several to compare.
+    #[command(after_long_help = "\
+Examples:
+  pellicle report vesicle-run
+  pellicle report soft stiff --out comparison.html        two runs in the same plots
+
+The page is a single HTML file without scripts or links; it opens in any browser and prints.")]
+    Report(Report),
     /// Print the JSON schema of scenarios, for editors that complete and check as you type.
     Schema,
     /// Print the completions of a shell.
@@ -168,6 +178,17 @@ pub struct Measure {
     /// Write the surface with its curvature to a VTU file.
     #[arg(long, short, value_name = "FILE", value_hint = ValueHint::FilePath)]
     pub out: Option<PathBuf>,
+}
+
+/// Arguments of `report`.
+#[derive(Debug, Args)]
+pub struct Report {
+    /// Directories of runs.
+    #[arg(value_name = "DIR", value_hint = ValueHint::DirPath, required = true)]
+    pub folders: Vec<PathBuf>,
+    /// The page to write; one that is there is replaced.
+    #[arg(long, short, value_name = "FILE", value_hint = ValueHint::FilePath, default_value = "report.html")]
+    pub out: PathBuf,
 }
 
 /// How a run goes and what it shows.

@@ -39,6 +39,7 @@ fn dispatch(arguments: &Arguments) -> Result<u8, Failure> {
         Command::Resume(resume) => commands::resume::run(resume),
         Command::Check(check) => commands::check::run(check),
         Command::Measure(measure) => commands::measure::run(measure),
+        Command::Report(report) => commands::report::run(report),
         Command::Schema => commands::schema::run(),
         Command::Completions { shell } => commands::completions::run(*shell),
     }

@@ -61,7 +61,7 @@ fn examine(case: &Case<'_>) -> Report {
     if let Some(care) = setup.parameters.mesh.filter(|care| care.adapt) {
         costs.push(cost(care.most_vertices));
     }
-    let mut findings = compare(case, default_compression(setup));
+    let mut findings = compare(case);
     let needs = needs(case);
     for need in needs.iter().filter(|need| !need.met()) {
         findings.warnings.push(format!(
@@ -81,12 +81,6 @@ fn bulk_viscosity(setup: &Setup) -> Option<f64> {
     let scenario: toml::Table = setup.resolved.parse().ok()?;
     let text = scenario.get("surroundings")?.get("bulk_viscosity")?.as_str()?.to_owned();
     parse_as(&text, &measure::BULK_VISCOSITY, None).ok()
-}
-
-/// Whether the area-compression modulus is the program's choice.
-fn default_compression(setup: &Setup) -> bool {
-    let mut lines = setup.resolved.lines();
-    lines.any(|line| line.starts_with("area_compression_modulus") && line.contains("# default"))
 }
 
 fn in_words(case: &Case<'_>, report: &Report) {

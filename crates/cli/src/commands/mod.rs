@@ -4,6 +4,7 @@ pub mod check;
 pub mod closing;
 pub mod completions;
 pub mod measure;
+pub mod report;
 pub mod resume;
 pub mod run;
 pub mod schema;

@@ -18,25 +18,25 @@ use std::fs;
 type Plan = (&'static str, &'static str, &'static [(&'static str, f64, &'static str)]);
 
 const PLOTS: [Plan; 13] = [
-    ("Free energy", "J", &[("free_energy_J", 1.0, "free energy")]),
+    ("Free energy", "aJ", &[("free_energy_J", 1e18, "free energy")]),
     (
         "Energies",
-        "J",
+        "aJ",
         &[
-            ("bending_energy_J", 1.0, "bending"),
-            ("phase_energy_J", 1.0, "phases"),
-            ("protein_energy_J", 1.0, "protein"),
-            ("stretching_energy_J", 1.0, "stretching"),
-            ("gaussian_energy_J", 1.0, "Gaussian"),
+            ("bending_energy_J", 1e18, "bending"),
+            ("phase_energy_J", 1e18, "phases"),
+            ("protein_energy_J", 1e18, "protein"),
+            ("stretching_energy_J", 1e18, "stretching"),
+            ("gaussian_energy_J", 1e18, "Gaussian"),
         ],
     ),
     (
         "Ledger",
-        "J",
+        "aJ",
         &[
-            ("dissipated_J", 1.0, "dissipated"),
-            ("external_work_J", 1.0, "work of loads and reservoirs"),
-            ("mesh_energy_J", 1.0, "by changes of the mesh"),
+            ("dissipated_J", 1e18, "dissipated"),
+            ("external_work_J", 1e18, "work of loads and reservoirs"),
+            ("mesh_energy_J", 1e18, "by changes of the mesh"),
         ],
     ),
     ("Energy balance error", "", &[("energy_balance_error", 1.0, "balance error")]),

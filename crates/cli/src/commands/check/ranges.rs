@@ -43,8 +43,8 @@ impl Range {
     }
 }
 
-/// Compare the constants of a case with published ranges. `default_compression`: K_A was not given.
-pub fn compare(case: &Case<'_>, default_compression: bool) -> Findings {
+/// Compare the constants of a case with published ranges.
+pub fn compare(case: &Case<'_>) -> Findings {
     let (parameters, scales) = (&case.setup.parameters, &case.setup.scales);
     let mut findings = Findings::default();
     let both = |at_zero: f64, at_one: f64| {
@@ -54,9 +54,13 @@ pub fn compare(case: &Case<'_>, default_compression: bool) -> Findings {
         }
         values
     };
-    let thermal = |value: f64| format!("{value:.3} kBT");
+    let thermal = |value: f64| format!("{value} kBT", value = (1e3 * value).round() / 1e3);
     let rigidity = Range { name: "bending rigidity", low: 10.0, high: 40.0, source: RIGIDITY_SOURCE };
     for value in both(parameters.bending_rigidity.at_zero, parameters.bending_rigidity.at_one) {
+        if value == 0.0 {
+            findings.notes.push("without bending rigidity this is a fluid film, no lipid bilayer".into());
+            continue;
+        }
         rigidity.warn(value * scales.energy / scales.thermal_energy, &thermal, &mut findings);
     }
     let surface = scales.energy * scales.time / (scales.length * scales.length);
@@ -68,14 +72,15 @@ pub fn compare(case: &Case<'_>, default_compression: bool) -> Findings {
     let per_length = |value: f64| with_unit(value, "N/m");
     let compression = parameters.area_compression_modulus * tension;
     let range = Range { name: "area compression modulus", low: 0.2, high: 0.3, source: COMPRESSION_SOURCE };
-    if default_compression {
-        if compression < range.low {
-            findings.notes.push(format!(
-                "area compression modulus {} is the program's choice, softer than lipids (0.2 to 0.3 N/m: \
-                 {COMPRESSION_SOURCE}); strains stay at 1e-3 or less all the same",
-                per_length(compression)
-            ));
-        }
+    if compression < range.low {
+        // Softer is the program's own choice, and no fault as long as strains stay small.
+        findings.notes.push(format!(
+            "area compression modulus {} is softer than lipids, {} to {} ({COMPRESSION_SOURCE}); this is of no \
+             consequence while tensions stay far below it",
+            per_length(compression),
+            per_length(range.low),
+            per_length(range.high)
+        ));
     } else {
         range.warn(compression, &per_length, &mut findings);
     }

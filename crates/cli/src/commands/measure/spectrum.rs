@@ -34,7 +34,7 @@ pub fn spectrum(mesh: &Mesh) -> Result<Spectrum, String> {
         let [a, b, c] = corners.map(|v| rays[v as usize].normalize());
         // Oosterom & Strackee, IEEE Trans. Biomed. Eng. 30 (1983) 125.
         let angle = 2.0 * a.dot(&b.cross(&c)).atan2(1.0 + a.dot(&b) + b.dot(&c) + c.dot(&a));
-        if !(angle > 0.0) {
+        if angle.is_nan() || angle <= 0.0 {
             return Err("some directions from its centre meet it more than once".into());
         }
         for v in corners {
@@ -113,7 +113,7 @@ fn solve(mut a: Vec<f64>, mut x: Vec<f64>) -> Option<Vec<f64>> {
             let left = a[i * n + j] - sum;
             if i == j {
                 // Relative to the orthonormal basis, whose diagonal is 1.
-                if !(left > 1e-8) {
+                if left.is_nan() || left <= 1e-8 {
                     return None;
                 }
                 a[i * n + i] = left.sqrt();

@@ -1,7 +1,7 @@
 //! Colours that colour-blind readers can tell apart and that print well in grey.
 
-/// Cividis: Nuñez, Anderton & Renslow, PLoS ONE 13 (2018) e0199239; nine of its values, linear in between.
-const CIVIDIS: [[f64; 3]; 9] = [
+/// Cividis: Nuñez, Anderton & Renslow, PLoS ONE 13 (2018) e0199239; ten of its values, linear in between.
+const CIVIDIS: [[f64; 3]; 10] = [
     [0.0, 34.0, 78.0],
     [18.0, 53.0, 112.0],
     [59.0, 73.0, 108.0],
@@ -10,6 +10,7 @@ const CIVIDIS: [[f64; 3]; 9] = [
     [138.0, 134.0, 120.0],
     [165.0, 156.0, 116.0],
     [195.0, 179.0, 105.0],
+    [225.0, 204.0, 85.0],
     [254.0, 232.0, 56.0],
 ];
 

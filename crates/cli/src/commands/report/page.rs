@@ -9,8 +9,7 @@ h1,h2,h3{line-height:1.2}.plots{display:flex;flex-wrap:wrap;gap:1em}figure{margi
 figcaption{font-weight:600}.shapes{display:flex;flex-wrap:wrap;gap:.6em}.shape figcaption{font-weight:400;text-align:center}\
 svg{max-width:100%;height:auto}svg text{font:11px system-ui,sans-serif;fill:#222}.grid{stroke:#ddd;stroke-width:1}\
 .box{fill:none;stroke:#444}.line{fill:none;stroke-width:1.6}.shape path{stroke-width:.5;stroke-linejoin:round}\
-.legend{font-size:13px}.legend span{margin-right:1.2em;white-space:nowrap}\
-.legend i{display:inline-block;width:2em;vertical-align:middle;margin-right:.4em}\
+.legend svg{vertical-align:middle}.legend{font-size:13px}.legend span{margin-right:1.2em;white-space:nowrap}\
 table{border-collapse:collapse;font-size:14px}td,th{border:1px solid #bbb;padding:.2em .6em;text-align:left;vertical-align:top}\
 pre{background:#f5f5f5;padding:.8em;overflow-x:auto;white-space:pre-wrap;font-size:13px}.small{font-size:13px;color:#444}\
 .warning{background:#fff3cd;padding:.4em .8em}\
@@ -36,15 +35,21 @@ pub fn escape(text: &str) -> String {
 /// A number for an axis or a caption.
 pub fn number(value: f64) -> String {
     let size = value.abs();
-    if size < 1e-12 && size != 0.0 && size < f64::EPSILON || value == 0.0 {
-        return if value == 0.0 { "0".into() } else { format!("{value:.3e}") };
+    if value == 0.0 {
+        return "0".into();
     }
     if (1e-3..1e5).contains(&size) {
         let digits = (3 - size.log10().floor() as i32).clamp(0, 6) as usize;
         let text = format!("{value:.digits$}");
         return if text.contains('.') { text.trim_end_matches('0').trim_end_matches('.').to_owned() } else { text };
     }
-    format!("{value:.3e}")
+    let text = format!("{value:.3e}");
+    match text.split_once('e') {
+        Some((digits, power)) if digits.contains('.') => {
+            format!("{}e{power}", digits.trim_end_matches('0').trim_end_matches('.'))
+        }
+        _ => text,
+    }
 }
 
 /// What is said of each run, runs side by side.

@@ -11,6 +11,14 @@ const TOP: f64 = 12.0;
 const BOTTOM: f64 = 40.0;
 /// More points than this add nothing that could be seen.
 const MOST_POINTS: usize = 1200;
+/// Dashes, as attributes.
+const DASHES: [&str; 5] = [
+    "",
+    " stroke-dasharray=\"7 3\"",
+    " stroke-dasharray=\"2 3\"",
+    " stroke-dasharray=\"9 3 2 3\"",
+    " stroke-dasharray=\"12 5\"",
+];
 
 /// One line of a plot.
 pub struct Line {
@@ -68,11 +76,10 @@ pub fn plot(title: &str, unit: &str, lines: &[Line]) -> Option<String> {
             .filter(|(k, _)| k % every == 0 || *k == last)
             .map(|(_, (t, v))| format!("{:.1},{:.1}", x(*t), y(*v)))
             .collect();
-        let dashes = ["", " stroke-dasharray=\"7 3\"", " stroke-dasharray=\"2 3\"", " stroke-dasharray=\"9 3 2 3\""];
         body += &format!(
             "<polyline class=\"line\" stroke=\"{}\"{} points=\"{}\"/>",
             of_line(line.colour),
-            dashes[line.dashes % dashes.len()],
+            DASHES[line.dashes % DASHES.len()],
             path.join(" ")
         );
         if let (1, Some((t, v))) = (line.points.len(), line.points.first()) {
@@ -82,10 +89,11 @@ pub fn plot(title: &str, unit: &str, lines: &[Line]) -> Option<String> {
     let legend: Vec<String> = lines
         .iter()
         .map(|line| {
-            let style = ["solid", "dashed", "dotted", "double"][line.dashes % 4];
             format!(
-                "<span><i style=\"border-top:2px {style} {}\"></i>{}</span>",
+                "<span><svg viewBox=\"0 0 36 8\" width=\"36\" height=\"8\"><line class=\"line\" x1=\"0\" y1=\"4\" x2=\"36\" \
+                 y2=\"4\" stroke=\"{}\"{}/></svg> {}</span>",
                 of_line(line.colour),
+                DASHES[line.dashes % DASHES.len()],
                 escape(&line.name)
             )
         })

@@ -4,7 +4,7 @@ use super::colours::{bar, of_share};
 use super::data::Run;
 use super::page::{escape, number};
 use crate::failure::Failure;
-use pellicle_surface::Vec3;
+use pellicle_surface::{Topology, Vec3};
 use pellicle_vtk::{Limits, ReadSurface, read_surface};
 
 /// Shapes drawn per run.
@@ -92,12 +92,18 @@ fn middle(shape: &Shape) -> Vec3 {
     0.5 * (low + high)
 }
 
-/// Right, up and towards the reader: the longest side of the shape's box upright, seen a little from above.
+fn closed(shape: &Shape) -> bool {
+    let surface = &shape.surface;
+    Topology::new(surface.points.len(), &surface.triangles).is_ok_and(|topology| topology.is_closed())
+}
+
+/// Right, up and towards the reader: z, or the longest side of a closed shape's box, upright, seen a little from
+/// above.
 fn view(shape: &Shape) -> (Vec3, Vec3, Vec3) {
     let middle = middle(shape);
     let size = points(shape).fold(Vec3::zeros(), |size, x| size.sup(&(x - middle).abs()));
-    // Flat patches are seen from the side, with z up.
-    let upright = if size.z > 0.3 * size.x.max(size.y) { size.imax() } else { 2 };
+    // Tubes run along z, and frames lie across it.
+    let upright = if closed(shape) { size.imax() } else { 2 };
     let mut axis = Vec3::zeros();
     axis[upright] = 1.0;
     let mut side = Vec3::zeros();
@@ -126,6 +132,8 @@ fn draw(shape: &Shape, axes: [&Vec3; 3], half: f64, field: Option<(&str, (f64, f
         .collect();
     let values = field.and_then(|(name, range)| Some((&shape.surface.point_array(name)?.values, range)));
     let places: Vec<Vec3> = points(shape).collect();
+    // The far side of a closed surface is hidden by the near one.
+    let closed = closed(shape);
     let mut order: Vec<(f64, [u32; 3])> = shape
         .surface
         .triangles
@@ -137,12 +145,15 @@ fn draw(shape: &Shape, axes: [&Vec3; 3], half: f64, field: Option<(&str, (f64, f
     for (_, corners) in order {
         let [a, b, c] = corners.map(|v| places[v as usize]);
         let normal = (b - a).cross(&(c - a));
-        let facing = if normal.norm() > 0.0 { normal.normalize().dot(ahead).abs() } else { 1.0 };
+        let facing = if normal.norm() > 0.0 { normal.normalize().dot(ahead) } else { 0.0 };
+        if closed && facing < 0.0 {
+            continue;
+        }
         let share = values.map_or(0.6, |(values, (low, high))| {
             let mean = corners.iter().filter_map(|v| values.get(*v as usize)).sum::<f64>() / 3.0;
             (mean - low) / (high - low)
         });
-        let colour = of_share(share, 0.55 + 0.45 * facing);
+        let colour = of_share(share, 0.55 + 0.45 * facing.abs());
         let path: Vec<String> =
             corners.iter().map(|v| format!("{:.1},{:.1}", seen[*v as usize][0], seen[*v as usize][1])).collect();
         // The line hides the seams between neighbours.
