@@ -51,6 +51,7 @@ pub fn load(path: &Path, overrides: &[String]) -> Result<Setup, ScenarioError> {
 ///
 /// # Errors
 /// As [`load`].
+#[cfg(test)]
 pub fn load_text(
     text: &str,
     name: &str,

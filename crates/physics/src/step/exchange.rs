@@ -223,6 +223,20 @@ impl Simulation {
         let n = self.measured.coverage.len();
         let mut by_coverage = vec![0.0; n];
         self.add_shape_derivatives(None, Some(&mut by_coverage));
+        if protein.gradient_energy > 0.0 {
+            let pull = interface::stiffness_times(&self.state.mesh, &self.measured.geometry, &self.measured.coverage);
+            for (slope, k) in by_coverage.iter_mut().zip(pull) {
+                *slope += protein.gradient_energy * k;
+            }
+        }
+        let mut own_stiffness = vec![0.0; n];
+        for (t, corners) in self.state.mesh.triangles.iter().enumerate() {
+            for (c, v) in corners.iter().enumerate() {
+                own_stiffness[*v as usize] += protein.gradient_energy
+                    * self.measured.geometry.area[t]
+                    * self.measured.geometry.gradients[t][c].norm_squared();
+            }
+        }
         let marker = self.state.marker();
         let mut dissipated = 0.0;
         let mut largest: f64 = 0.0;
@@ -230,7 +244,8 @@ impl Simulation {
             let m = self.state.lipid[i];
             let theta = self.measured.coverage[i];
             let phi = self.measured.composition.get(i).copied().unwrap_or(0.0);
-            let linear = self.coverage_curvature(i) / m;
+            // The gradient energy couples neighbours: its own part is implicit, theirs stands still during the step.
+            let linear = (self.coverage_curvature(i) + own_stiffness[i]) / m;
             let bending = BendingSlope {
                 constant: by_coverage[i] / m - linear * theta,
                 linear,
