@@ -139,6 +139,17 @@ impl Simulation {
     /// stretch or compress the membrane at once, and the energy of that would spoil the ledger.
     fn settle_lipids(&mut self) -> Result<(), PhysicsError> {
         let modulus = self.parameters.area_compression_modulus;
+        // Only where they lie as `State::at_rest` put them; who laid them otherwise had a reason.
+        let relaxed = 1.0 + self.state.tension.first().copied().unwrap_or(0.0) / modulus;
+        let untouched = self
+            .state
+            .lipid
+            .iter()
+            .zip(&self.measured.geometry.vertex_area)
+            .all(|(m, a)| (m * relaxed - a).abs() <= 1e-6 * a);
+        if !untouched {
+            return Ok(());
+        }
         let (composition, coverage, marker) =
             (self.state.composition(), self.state.coverage(), self.state.marker());
         let area = self.measured.geometry.total_area;
