@@ -9,6 +9,7 @@
 //! Scriven, Chem. Eng. Sci. 12 (1960) 98; for linear triangles the derivation is elementary.
 
 use nalgebra::Matrix3;
+use pellicle_surface::operators::strain_rate;
 use pellicle_surface::geometry::Geometry;
 use pellicle_surface::{Mesh, Vec3};
 
@@ -28,18 +29,6 @@ pub fn block(
         block -= ga * gb.transpose();
     }
     block * weight
-}
-
-/// Rate of strain d of a triangle from its corner velocities, in the tangent plane.
-#[inline]
-pub fn strain_rate(gradients: &[Vec3; 3], normal: &Vec3, velocity: [Vec3; 3]) -> Matrix3<f64> {
-    let mut gradient = Matrix3::zeros();
-    for c in 0..3 {
-        gradient += velocity[c] * gradients[c].transpose();
-    }
-    let projector = Matrix3::identity() - normal * normal.transpose();
-    let flat = projector * gradient;
-    (flat + flat.transpose()) * 0.5
 }
 
 /// Dissipation 2ζ d:d per area of each triangle (deviatoric d where asked).

@@ -199,17 +199,6 @@ impl Simulation {
             self.measured.energies(&self.parameters, &self.connectivity.topology, &self.state);
     }
 
-    /// Adopt a mesh with another connectivity (after remeshing); the state's fields are already on it.
-    ///
-    /// # Errors
-    /// A mesh that is not a manifold.
-    pub fn reconnect(&mut self) -> Result<(), PhysicsError> {
-        self.connectivity = Connectivity::new(&self.state)?;
-        self.forget_connectivity();
-        self.measure();
-        Ok(())
-    }
-
     /// Drop what belonged to the connectivity before.
     pub(super) fn forget_connectivity(&mut self) {
         self.diffusion = None;
