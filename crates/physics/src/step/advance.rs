@@ -68,6 +68,11 @@ pub struct StepReport {
 const SETTLED: f64 = 0.01;
 /// Rise of free energy, relative to its size, that rounding and remapping may cause.
 pub(super) const RISE: f64 = 1e-12;
+/// Share of its own dissipation by which a step near rest may raise the free energy. At rest composition and shape
+/// are each at ease only with the other where it was half a step ago; the longer the step, the higher that energy.
+const RISE_AT_REST: f64 = 1e-3;
+/// Near rest: going on as long again would dissipate less than this share of the energy turned over so far.
+const NEAR_REST: f64 = 1e-3;
 /// A load beyond this is refused rather than corrected in the next step.
 const LATITUDE: f64 = 2.5;
 /// So many steps at the start are refused at a load of 1.
@@ -343,10 +348,12 @@ impl Simulation {
         self.timings.forces += clock.elapsed().as_secs_f64();
         let rise = self.energies.total() - start.total() - work.with_final_force;
         let scale = start.total().abs().max(start.bending.abs()).max(start.phase.abs());
-        if rise.is_nan() || rise > RISE * scale {
+        let dissipated = motion.dissipated + motion.permeation + transported;
+        let near_rest = self.share_in_as_long_again(dissipated / step) < NEAR_REST;
+        let allowed = RISE * scale + if near_rest { RISE_AT_REST * dissipated } else { 0.0 };
+        if rise.is_nan() || rise > allowed {
             return Ok(Attempt::Refused(Reason::EnergyRise));
         }
-        let dissipated = motion.dissipated + motion.permeation + transported;
         // Where the shape is unstable the true defect exceeds the prediction, which knows only the positive part of the
         // second variation. What is far beyond it is noise of the mesh, which shorter steps would not cure.
         let found = (start.total() + work.with_mean_force - dissipated - self.energies.total()).abs() - given_back;
@@ -385,6 +392,12 @@ impl Simulation {
 
     /// See [`StepReport::unrest`]; `rate` is the energy released per time.
     fn unrest(&self, rate: f64) -> f64 {
+        100.0 * self.share_in_as_long_again(rate)
+    }
+
+    /// What `rate`, an energy per time, would come to in as long a time again, as a share of all energy turned over so
+    /// far. Infinite while a load or the volume is driven.
+    fn share_in_as_long_again(&self, rate: f64) -> f64 {
         let ends = |path: &[(f64, Vec3)]| path.last().map_or(0.0, |p| p.0);
         let loads = self.parameters.loads.iter().map(|load| match &load.pull {
             Pull::Force(path) | Pull::Trap { path, .. } => ends(path),
@@ -400,7 +413,7 @@ impl Simulation {
         let change = (self.energies.total() - ledger.start_energy).abs();
         // Rounding of the energies must not pass for motion of a membrane that was at rest from the start.
         let turned_over = change.max(ledger.work.abs()).max(1e-9 * ledger.start_energy.abs());
-        100.0 * rate * self.state.time / turned_over.max(f64::MIN_POSITIVE)
+        rate * self.state.time / turned_over.max(f64::MIN_POSITIVE)
     }
 
     /// Work done on the membrane by loads and by a driven volume.

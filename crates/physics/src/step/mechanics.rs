@@ -203,12 +203,13 @@ pub fn solve(
         .zip(&velocity)
         .map(|(g, v)| g.dot(v))
         .sum();
-    let permeation = match &parameters.volume {
-        VolumeCondition::Osmotic {
-            permeability: Some(permeability),
-            ..
-        } => volume_rate * volume_rate / (permeability * geometry.total_area),
-        _ => 0.0,
+    let (permeation, baths) = match &parameters.volume {
+        VolumeCondition::Osmotic { inside, permeability, .. } => (
+            permeability.map_or(0.0, |permeability| volume_rate * volume_rate / (permeability * geometry.total_area)),
+            // Half of how far the osmotic energy bends along the way, as the stiff parts below.
+            0.5 * inside * (step * volume_rate / geometry.volume).powi(2),
+        ),
+        _ => (0.0, 0.0),
     };
     Ok(Motion {
         velocity,
@@ -219,7 +220,7 @@ pub fn solve(
         weights,
         dissipated: step * (viscous + drag),
         permeation: step * permeation,
-        lag: stiff,
+        lag: stiff + baths,
         residual,
     })
 }

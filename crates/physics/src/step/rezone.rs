@@ -52,6 +52,13 @@ impl Simulation {
             .collect();
         let volume = match &self.parameters.volume {
             VolumeCondition::Fixed(path) => along_path(path, self.state.time + step),
+            // As much as the step let through. What the moved surface encloses differs from it in second order, which
+            // against the pressure of osmolytes is a lot.
+            VolumeCondition::Osmotic { .. } => {
+                let old = &self.measured.geometry;
+                let rate: f64 = old.volume_gradient.iter().zip(&motion.velocity).map(|(g, v)| g.dot(v)).sum();
+                Some(old.volume + step * rate)
+            }
             _ => None,
         };
         self.move_vertices(&geometry, &slide, volume.unwrap_or(geometry.volume))
