@@ -18,7 +18,7 @@ use pellicle_physics::transport::diffusion::{DiffusionInput, DiffusionSolver};
 use pellicle_surface::mesh::shapes::irregular_sphere;
 
 const SOURCE: &str = "linearised Cahn & Hilliard, J. Chem. Phys. 28 (1958) 258";
-const PHASES: Phases = Phases { line_tension: 1.0, interface_width: 0.4, diffusion_constant: 1.0 };
+const PHASES: Phases = Phases { line_tension: 1.0, interface_width: 0.4, diffusion_constant: 1.0, width_per_radius: 0.0 };
 
 fn exact(l: usize, mean: f64) -> f64 {
     let well = DoubleWell::new(&PHASES);

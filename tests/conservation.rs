@@ -19,7 +19,7 @@ fn amounts_through_motion_and_remeshing() -> Fallible {
     let mesh = irregular_ellipsoid([1.0, 1.0, 3.5], 400, SEED)?;
     let n = mesh.n_vertices();
     let mut parameters = vesicle(&mesh);
-    parameters.phases = Some(Phases { line_tension: 2.0, interface_width: 0.6, diffusion_constant: 0.2 });
+    parameters.phases = Some(Phases { line_tension: 2.0, interface_width: 0.6, diffusion_constant: 0.2, width_per_radius: 0.0 });
     parameters.protein = Some(Protein {
         attach_rate: 0.0,
         detach_rate: 0.0,

@@ -19,7 +19,7 @@ use pellicle_surface::mesh::shapes::irregular_tube;
 use std::f64::consts::TAU;
 
 const SOURCE: &str = "Cahn & Hilliard, J. Chem. Phys. 28 (1958) 258";
-const PHASES: Phases = Phases { line_tension: 1.0, interface_width: 0.2, diffusion_constant: 1.0 };
+const PHASES: Phases = Phases { line_tension: 1.0, interface_width: 0.2, diffusion_constant: 1.0, width_per_radius: 0.0 };
 const RADIUS: f64 = 0.4;
 const LENGTH: f64 = 4.0;
 

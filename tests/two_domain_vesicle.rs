@@ -36,7 +36,7 @@ fn rest(case: &Case, width: f64, across: f64) -> Result<[f64; 3], Box<dyn std::e
     let edge = 2.0 * width / across;
     let mesh = sphere(1.0, edge)?;
     let mut parameters = Parameters {
-        phases: Some(Phases { line_tension: case.line_tension, interface_width: width, diffusion_constant: 1.0 }),
+        phases: Some(Phases { line_tension: case.line_tension, interface_width: width, diffusion_constant: 1.0, width_per_radius: 0.0 }),
         ..Parameters::bare(1.0, 1.0, 1e4)
     };
     parameters.mesh = Some(MeshCare {

@@ -26,7 +26,7 @@ fn simulation(vertices: usize) -> Result<Simulation, Box<dyn std::error::Error>>
     shapes::perturb(&mut mesh, 0.1, 1)?;
     let mut p = Parameters::bare(1.0, 1.0, 3e4);
     p.volume = VolumeCondition::Fixed(vec![(0.0, Geometry::new(&mesh).volume)]);
-    p.phases = Some(Phases { line_tension: 4.0, interface_width: 0.2, diffusion_constant: 1.0 });
+    p.phases = Some(Phases { line_tension: 4.0, interface_width: 0.2, diffusion_constant: 1.0, width_per_radius: 0.0 });
     p.spontaneous_curvature = Blend { at_zero: 0.0, at_one: 0.0, per_coverage: 0.5 };
     p.gaussian_modulus = Blend { at_zero: 0.0, at_one: 0.5, per_coverage: 0.0 };
     p.protein = Some(Protein {

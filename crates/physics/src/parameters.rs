@@ -76,6 +76,9 @@ pub struct Phases {
     pub line_tension: f64,
     /// Half width ε of the profile u = tanh(x/ε) [length].
     pub interface_width: f64,
+    /// Where the membrane curves tightly the interface is narrower, at most this share of the smallest radius of
+    /// curvature; zero: as wide everywhere. Narrowing happens with adaptation of the mesh.
+    pub width_per_radius: f64,
     /// Diffusion constant D within a phase [length²/time]; mobility M = D/W''(±1).
     pub diffusion_constant: f64,
 }
@@ -283,6 +286,11 @@ impl Parameters {
                     return refuse(name, value, "it must be finite and positive");
                 }
             }
+        }
+        if let Some(phases) = &self.phases
+            && !(phases.width_per_radius >= 0.0 && phases.width_per_radius.is_finite())
+        {
+            return refuse("width_per_radius", phases.width_per_radius, "it must be finite and not negative");
         }
         if let Some(protein) = &self.protein {
             for (name, value) in [

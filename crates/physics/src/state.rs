@@ -55,6 +55,8 @@ pub struct State {
     pub lipid: Vec<f64>,
     /// φ m of each vertex; empty without phases.
     pub composition_amount: Vec<f64>,
+    /// Interface width ε at each vertex, at most the one asked for; empty without phases.
+    pub interface_width: Vec<f64>,
     /// θ m of each vertex; empty without protein.
     pub bound_amount: Vec<f64>,
     /// g m of each vertex, a marker carried by the lipids; empty without a marked region.
@@ -143,6 +145,7 @@ impl State {
             time: 0.0,
             step: parameters.step.first,
             composition_amount: times(composition),
+            interface_width: parameters.phases.map_or_else(Vec::new, |phases| vec![phases.interface_width; n]),
             bound_amount: times(coverage),
             marker_amount: times(marker),
             tension: vec![start_tension; n],

@@ -26,7 +26,7 @@ fn near(value: f64, exact: f64, tolerance: f64) {
 }
 
 fn phases() -> Phases {
-    Phases { line_tension: 1.0, interface_width: 0.1, diffusion_constant: 1.0 }
+    Phases { line_tension: 1.0, interface_width: 0.1, diffusion_constant: 1.0, width_per_radius: 0.0 }
 }
 
 fn protein() -> Protein {

@@ -146,13 +146,17 @@ fn stretching_and_volume_forces_are_exact_gradients() {
 
 #[test]
 fn interface_force_is_the_exact_gradient() {
-    let well = interface::DoubleWell::new(&Phases { line_tension: 2.0, interface_width: 0.3, diffusion_constant: 1.0 });
+    let phases = Phases { line_tension: 2.0, interface_width: 0.3, diffusion_constant: 1.0, width_per_radius: 0.0 };
     for (name, mesh) in meshes() {
         let u: Vec<f64> = wave(&mesh, 0.4).iter().map(|f| 2.0 * f - 1.0).collect();
-        let local: Vec<f64> = u.iter().map(|u| well.value(*u)).collect();
-        let energy = |m: &Mesh| interface::energy(m, &Geometry::new(m), &well, &u);
+        // The width belongs to the vertices and stays with them.
+        let width: Vec<f64> = wave(&mesh, 0.1).iter().map(|f| 0.6 * f).collect();
+        let mut fields = interface::InterfaceFields::default();
+        fields.update(&mesh, &phases, &width);
+        let local = fields.local_energy(&u);
+        let energy = |m: &Mesh| interface::energy(m, &Geometry::new(m), &fields, &u);
         let mut gradient = vec![Vec3::zeros(); mesh.n_vertices()];
-        interface::add_exact_gradient(&mesh, &Geometry::new(&mesh), &local, well.gradient_energy, &u, &mut gradient);
+        interface::add_exact_gradient(&mesh, &Geometry::new(&mesh), &local, fields.gamma(), &u, &mut gradient);
         let error = worst(&mesh, &|_| false, &gradient, &energy);
         println!("interface, {name}: {error:.1e}");
         assert!(error < BOUND, "{name}: {error:e}");

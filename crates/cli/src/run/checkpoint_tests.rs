@@ -13,7 +13,7 @@ fn sample() -> &'static Checkpoint {
     static SAMPLE: OnceLock<Checkpoint> = OnceLock::new();
     SAMPLE.get_or_init(|| {
         let mut parameters = Parameters::bare(1.0, 1.0, 1e4);
-        parameters.phases = Some(Phases { line_tension: 1.0, interface_width: 0.5, diffusion_constant: 1.0 });
+        parameters.phases = Some(Phases { line_tension: 1.0, interface_width: 0.5, diffusion_constant: 1.0, width_per_radius: 0.0 });
         parameters.mesh = Some(MeshCare {
             adapt: false,
             edge: 0.6,

@@ -191,6 +191,7 @@ const VOLUME: &[Key] = &[
 const COMPOSITION: &[Key] = &[
     key("line_tension", Quantity(m::FORCE, Positive), "\"0.5 pN\"", "line tension of the interface between the phases"),
     key("interface_width", Quantity(m::LENGTH, Positive), "\"0.6 um\"", "half width of the interface: composition follows tanh(x/width)"),
+    key("width_per_radius", Number(Within(0.0, 1.0)), "0.3", "where the membrane curves tightly the interface is narrowed to this share of the smallest radius of curvature, the edges with it; 0: as wide everywhere").or("0.0"),
     key("diffusion_constant", Quantity(m::DIFFUSION, Positive), "\"1 um^2/s\"", "diffusion constant within a phase"),
     key("mean", Number(Within(0.0, 1.0)), "0.3", "start: mean composition"),
     key("noise", Number(Within(0.0, 0.5)), "0.02", "start: largest deviation of random noise"),

@@ -245,6 +245,7 @@ pub fn parameters(
             line_tension: s.get("composition.line_tension", m::FORCE),
             interface_width: s.get("composition.interface_width", m::LENGTH),
             diffusion_constant: s.get("composition.diffusion_constant", m::DIFFUSION),
+            width_per_radius: values.number("composition.width_per_radius").unwrap_or(0.0),
         }),
         protein: values.has_section("protein").then(|| protein(&s)),
         rim: framed.then(|| match values.text("frame.rim") {

@@ -1,7 +1,7 @@
 //! Fields of a state, per vertex and per triangle, for viewing.
 
 use crate::dissipation::boussinesq_scriven;
-use crate::energy::interface::{self, DoubleWell};
+use crate::energy::interface;
 use crate::energy::{bending, gaussian};
 use crate::parameters::AreaCondition;
 use crate::step::advance::Simulation;
@@ -121,8 +121,8 @@ fn gaussian_curvature(simulation: &Simulation) -> Vec<f64> {
 pub fn chemical_potential(simulation: &Simulation) -> Option<Vec<f64>> {
     let (parameters, state, measured) =
         (&simulation.parameters, &simulation.state, &simulation.measured);
-    let well = DoubleWell::new(parameters.phases.as_ref()?);
-    let local = interface::potential(&state.mesh, &measured.geometry, &well, &measured.order);
+    parameters.phases.as_ref()?;
+    let local = interface::potential(&state.mesh, &measured.geometry, &measured.interface, &measured.order);
     let mut slope: Vec<f64> = local
         .iter()
         .zip(&measured.geometry.vertex_area)

@@ -14,22 +14,17 @@ use crate::parameters::Phases;
 use pellicle_surface::geometry::Geometry;
 use pellicle_surface::{Mesh, Vec3};
 
-/// Double well and gradient energy.
+/// Double well at a place.
 #[derive(Clone, Copy, Debug)]
 pub struct DoubleWell {
     /// a in W = (a/4)(1 − u²)² [energy/area].
     pub depth: f64,
-    /// γ in γ/2 |∇u|² [energy].
-    pub gradient_energy: f64,
 }
 
 impl DoubleWell {
-    /// From line tension and interface width.
-    pub fn new(phases: &Phases) -> Self {
-        Self {
-            depth: 1.5 * phases.line_tension / phases.interface_width,
-            gradient_energy: 0.75 * phases.line_tension * phases.interface_width,
-        }
+    /// From line tension and the interface width there.
+    pub fn new(line_tension: f64, width: f64) -> Self {
+        Self { depth: 1.5 * line_tension / width }
     }
 
     /// Mobility M = D/W''(±1) for fluxes −M∇μ of u.
@@ -57,6 +52,60 @@ impl DoubleWell {
     }
 }
 
+/// Double well at each vertex and gradient energy of each triangle, for an interface width that may vary in space.
+///
+/// The line tension does not depend on the width, so that an interface is not driven to where it is narrow (to first
+/// order in the change of width across it).
+#[derive(Clone, Debug, Default)]
+pub struct InterfaceFields {
+    /// Well of each vertex.
+    pub wells: Vec<DoubleWell>,
+    /// γ of each triangle [energy], of the mean width of its corners.
+    pub gradient_energy: Vec<f64>,
+}
+
+impl InterfaceFields {
+    /// From line tension and the width at each vertex.
+    pub fn update(&mut self, mesh: &Mesh, phases: &Phases, width: &[f64]) {
+        self.wells.clear();
+        self.wells.extend(width.iter().map(|w| DoubleWell::new(phases.line_tension, *w)));
+        self.gradient_energy.clear();
+        self.gradient_energy.extend(mesh.triangles.iter().map(|corners| {
+            0.25 * phases.line_tension * corners.iter().map(|&v| width[v as usize]).sum::<f64>()
+        }));
+    }
+
+    /// γ of triangles.
+    pub fn gamma(&self) -> GradientEnergy<'_> {
+        GradientEnergy::PerTriangle(&self.gradient_energy)
+    }
+
+    /// W(u) of each vertex.
+    pub fn local_energy(&self, u: &[f64]) -> Vec<f64> {
+        self.wells.iter().zip(u).map(|(well, u)| well.value(*u)).collect()
+    }
+}
+
+/// γ in γ/2 |∇f|² [energy].
+#[derive(Clone, Copy, Debug)]
+pub enum GradientEnergy<'a> {
+    /// The same everywhere.
+    Uniform(f64),
+    /// One value per triangle.
+    PerTriangle(&'a [f64]),
+}
+
+impl GradientEnergy<'_> {
+    /// γ of triangle `t`.
+    #[inline]
+    pub fn of(&self, t: usize) -> f64 {
+        match self {
+            Self::Uniform(gamma) => *gamma,
+            Self::PerTriangle(gamma) => gamma[t],
+        }
+    }
+}
+
 /// Gradient of a linear field on a triangle.
 #[inline]
 pub fn triangle_gradient(geometry: &Geometry, t: usize, corners: &[u32; 3], field: &[f64]) -> Vec3 {
@@ -65,12 +114,12 @@ pub fn triangle_gradient(geometry: &Geometry, t: usize, corners: &[u32; 3], fiel
 }
 
 /// γ/2 Σ A_T |∇f|².
-pub fn gradient_energy(mesh: &Mesh, geometry: &Geometry, gamma: f64, field: &[f64]) -> f64 {
+pub fn gradient_energy(mesh: &Mesh, geometry: &Geometry, gamma: GradientEnergy, field: &[f64]) -> f64 {
     mesh.triangles
         .iter()
         .enumerate()
         .map(|(t, corners)| {
-            0.5 * gamma
+            0.5 * gamma.of(t)
                 * geometry.area[t]
                 * triangle_gradient(geometry, t, corners, field).norm_squared()
         })
@@ -78,21 +127,21 @@ pub fn gradient_energy(mesh: &Mesh, geometry: &Geometry, gamma: f64, field: &[f6
 }
 
 /// Interface energy.
-pub fn energy(mesh: &Mesh, geometry: &Geometry, well: &DoubleWell, u: &[f64]) -> f64 {
+pub fn energy(mesh: &Mesh, geometry: &Geometry, fields: &InterfaceFields, u: &[f64]) -> f64 {
     let bulk: f64 = geometry
         .vertex_area
         .iter()
-        .zip(u)
-        .map(|(a, u)| a * well.value(*u))
+        .zip(fields.wells.iter().zip(u))
+        .map(|(a, (well, u))| a * well.value(*u))
         .sum();
-    bulk + gradient_energy(mesh, geometry, well.gradient_energy, u)
+    bulk + gradient_energy(mesh, geometry, fields.gamma(), u)
 }
 
-/// Σ_j K_ij f_j with the cotangent (stiffness) matrix K.
-pub fn stiffness_times(mesh: &Mesh, geometry: &Geometry, field: &[f64]) -> Vec<f64> {
+/// Σ_j K_ij f_j with the cotangent (stiffness) matrix K weighted by γ.
+pub fn stiffness_times(mesh: &Mesh, geometry: &Geometry, gamma: GradientEnergy, field: &[f64]) -> Vec<f64> {
     let mut out = vec![0.0; field.len()];
     for (t, corners) in mesh.triangles.iter().enumerate() {
-        let gradient = triangle_gradient(geometry, t, corners, field) * geometry.area[t];
+        let gradient = triangle_gradient(geometry, t, corners, field) * (gamma.of(t) * geometry.area[t]);
         for c in 0..3 {
             out[corners[c] as usize] += geometry.gradients[t][c].dot(&gradient);
         }
@@ -100,13 +149,13 @@ pub fn stiffness_times(mesh: &Mesh, geometry: &Geometry, field: &[f64]) -> Vec<f
     out
 }
 
-/// Local part of the chemical potential, μ̂_i = W'(u_i) + γ (K u)_i / A_i [energy/area].
-pub fn potential(mesh: &Mesh, geometry: &Geometry, well: &DoubleWell, u: &[f64]) -> Vec<f64> {
-    stiffness_times(mesh, geometry, u)
+/// Local part of the chemical potential, μ̂_i = W'(u_i) + (K u)_i / A_i [energy/area], K weighted by γ.
+pub fn potential(mesh: &Mesh, geometry: &Geometry, fields: &InterfaceFields, u: &[f64]) -> Vec<f64> {
+    stiffness_times(mesh, geometry, fields.gamma(), u)
         .iter()
         .zip(&geometry.vertex_area)
-        .zip(u)
-        .map(|((k, a), u)| well.slope(*u) + well.gradient_energy * k / a)
+        .zip(fields.wells.iter().zip(u))
+        .map(|((k, a), (well, u))| well.slope(*u) + k / a)
         .collect()
 }
 
@@ -130,15 +179,15 @@ pub fn add_exact_gradient(
     mesh: &Mesh,
     geometry: &Geometry,
     local: &[f64],
-    gamma: f64,
+    gamma: GradientEnergy,
     field: &[f64],
     out: &mut [Vec3],
 ) {
     for (t, corners) in mesh.triangles.iter().enumerate() {
-        let (isotropic, gradient) = triangle_stress(geometry, t, corners, local, gamma, field);
+        let (isotropic, gradient) = triangle_stress(geometry, t, corners, local, gamma.of(t), field);
         for c in 0..3 {
             let g = geometry.gradients[t][c];
-            out[corners[c] as usize] += (g * isotropic - gradient * (gamma * gradient.dot(&g))) * geometry.area[t];
+            out[corners[c] as usize] += (g * isotropic - gradient * (gamma.of(t) * gradient.dot(&g))) * geometry.area[t];
         }
     }
 }
@@ -154,7 +203,7 @@ pub fn add_balanced_gradient(
     mesh: &Mesh,
     geometry: &Geometry,
     local: &[f64],
-    gamma: f64,
+    gamma: GradientEnergy,
     field: &[f64],
     potential: &[f64],
     out: &mut [Vec3],

@@ -1,6 +1,6 @@
 //! The free energy of a state, term by term.
 
-use super::interface::DoubleWell;
+use super::interface::{GradientEnergy, InterfaceFields};
 use super::{bending, gaussian, interface, protein, reservoirs, stretching};
 use crate::coupling::MaterialFields;
 use crate::parameters::{AreaCondition, Parameters, Rim};
@@ -49,6 +49,8 @@ pub struct Measured {
     pub composition: Vec<f64>,
     /// u = 2φ − 1 (empty without phases).
     pub order: Vec<f64>,
+    /// Double wells and gradient energies of the phases (empty without).
+    pub interface: InterfaceFields,
     /// Coverage θ (empty without protein).
     pub coverage: Vec<f64>,
     /// Vertices whose bending residual is dropped: hinged rims.
@@ -85,6 +87,9 @@ impl Measured {
         self.composition.extend(state.composition_amount.iter().zip(&state.lipid).map(|(n, m)| n / m));
         self.order.clear();
         self.order.extend(self.composition.iter().map(|c| 2.0 * c - 1.0));
+        if let Some(phases) = &parameters.phases {
+            self.interface.update(&state.mesh, phases, &state.interface_width);
+        }
         self.coverage.clear();
         self.coverage.extend(state.bound_amount.iter().zip(&state.lipid).map(|(n, m)| n / m));
         self.material.update(
@@ -122,9 +127,8 @@ impl Measured {
             reservoirs: reservoirs::energy(&parameters.volume, self.geometry.volume),
             ..Energies::default()
         };
-        if let Some(phases) = &parameters.phases {
-            energies.phase =
-                interface::energy(&state.mesh, &self.geometry, &DoubleWell::new(phases), &self.order);
+        if parameters.phases.is_some() {
+            energies.phase = interface::energy(&state.mesh, &self.geometry, &self.interface, &self.order);
         }
         if let Some(protein) = &parameters.protein {
             energies.protein =
@@ -132,7 +136,7 @@ impl Measured {
                     + interface::gradient_energy(
                         &state.mesh,
                         &self.geometry,
-                        protein.gradient_energy,
+                        GradientEnergy::Uniform(protein.gradient_energy),
                         &self.coverage,
                     );
         }

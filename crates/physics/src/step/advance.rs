@@ -68,11 +68,11 @@ pub struct StepReport {
 const SETTLED: f64 = 0.01;
 /// Rise of free energy, relative to its size, that rounding and remapping may cause.
 pub(super) const RISE: f64 = 1e-12;
-/// Share of its own dissipation by which a step near rest may raise the free energy. At rest composition and shape
-/// are each at ease only with the other where it was half a step ago; the longer the step, the higher that energy.
-const RISE_AT_REST: f64 = 1e-3;
-/// Near rest: going on as long again would dissipate less than this share of the energy turned over so far.
-const NEAR_REST: f64 = 1e-3;
+/// Share of its own dissipation by which a step at rest may raise the free energy. At rest composition and shape are
+/// each at ease only with the other where it was half a step ago; the longer the step, the higher that energy.
+const RISE_AT_REST: f64 = 0.01;
+/// At rest: as long again at such a rise would come to less than this share of the energy turned over so far.
+const AT_REST: f64 = 1e-4;
 /// A load beyond this is refused rather than corrected in the next step.
 const LATITUDE: f64 = 2.5;
 /// So many steps at the start are refused at a load of 1.
@@ -200,6 +200,13 @@ impl Simulation {
     /// Measure the present state again.
     pub fn measure(&mut self) {
         self.measured.update(&self.parameters, &self.connectivity.topology, &self.state);
+        self.energies =
+            self.measured.energies(&self.parameters, &self.connectivity.topology, &self.state);
+    }
+
+    /// Measure fields and energies again (shape unchanged).
+    pub(super) fn measure_fields(&mut self) {
+        self.measured.update_fields(&self.parameters, &self.state);
         self.energies =
             self.measured.energies(&self.parameters, &self.connectivity.topology, &self.state);
     }
@@ -349,8 +356,8 @@ impl Simulation {
         let rise = self.energies.total() - start.total() - work.with_final_force;
         let scale = start.total().abs().max(start.bending.abs()).max(start.phase.abs());
         let dissipated = motion.dissipated + motion.permeation + transported;
-        let near_rest = self.share_in_as_long_again(dissipated / step) < NEAR_REST;
-        let allowed = RISE * scale + if near_rest { RISE_AT_REST * dissipated } else { 0.0 };
+        let at_rest = self.share_in_as_long_again(rise / step) < AT_REST;
+        let allowed = RISE * scale + if at_rest { RISE_AT_REST * dissipated } else { 0.0 };
         if rise.is_nan() || rise > allowed {
             return Ok(Attempt::Refused(Reason::EnergyRise));
         }
@@ -501,12 +508,11 @@ impl Simulation {
 
     /// Tension of each vertex as the membrane feels it: the lipid constraint's, without the interface's share.
     pub fn membrane_tension(&self) -> Vec<f64> {
-        let Some(phases) = &self.parameters.phases else {
+        if self.parameters.phases.is_none() {
             return self.state.tension.clone();
-        };
-        let well = interface::DoubleWell::new(phases);
+        }
         let potential =
-            interface::potential(&self.state.mesh, &self.measured.geometry, &well, &self.measured.order);
+            interface::potential(&self.state.mesh, &self.measured.geometry, &self.measured.interface, &self.measured.order);
         self.state
             .tension
             .iter()

@@ -3,6 +3,7 @@
 use super::advance::{RISE, Simulation};
 use super::control::{Loads, Reason};
 use crate::PhysicsError;
+use crate::energy::interface::GradientEnergy;
 use crate::energy::{bending, gaussian, interface};
 use crate::parameters::BindingRegion;
 use crate::transport::binding::{BendingSlope, bind};
@@ -74,7 +75,7 @@ impl Simulation {
             return Ok(0.0);
         };
         self.analyse_diffusion()?;
-        let well = interface::DoubleWell::new(&phases);
+        let wells = &self.measured.interface.wells;
         let n = self.measured.order.len();
         // Derivatives with respect to u = 2φ − 1: half of those with respect to φ.
         let mut by_composition = vec![0.0; n];
@@ -88,9 +89,9 @@ impl Simulation {
         let area = &self.measured.geometry.vertex_area;
         let u = &self.measured.order;
         let slope: Vec<f64> =
-            (0..n).map(|i| area[i] * well.slope(u[i]) + 0.5 * by_composition[i]).collect();
-        let curvature: Vec<f64> = (0..n).map(|i| area[i] * well.curvature(u[i])).collect();
-        let mobility = vec![well.mobility(phases.diffusion_constant); n];
+            (0..n).map(|i| area[i] * wells[i].slope(u[i]) + 0.5 * by_composition[i]).collect();
+        let curvature: Vec<f64> = (0..n).map(|i| area[i] * wells[i].curvature(u[i])).collect();
+        let mobility: Vec<f64> = wells.iter().map(|well| well.mobility(phases.diffusion_constant)).collect();
         let Some(solver) = self.diffusion.as_mut() else {
             return Ok(0.0);
         };
@@ -101,7 +102,7 @@ impl Simulation {
             field: u,
             slope: &slope,
             curvature: &curvature,
-            gradient_energy: well.gradient_energy,
+            gradient_energy: self.measured.interface.gamma(),
             mobility: &mobility,
             step,
         })?;
@@ -175,7 +176,7 @@ impl Simulation {
             field: theta,
             slope: &slope,
             curvature: &curvature,
-            gradient_energy: protein.gradient_energy,
+            gradient_energy: GradientEnergy::Uniform(protein.gradient_energy),
             mobility: &mobility,
             step,
         })?;
@@ -224,9 +225,11 @@ impl Simulation {
         let mut by_coverage = vec![0.0; n];
         self.add_shape_derivatives(None, Some(&mut by_coverage));
         if protein.gradient_energy > 0.0 {
-            let pull = interface::stiffness_times(&self.state.mesh, &self.measured.geometry, &self.measured.coverage);
+            let gamma = GradientEnergy::Uniform(protein.gradient_energy);
+            let pull =
+                interface::stiffness_times(&self.state.mesh, &self.measured.geometry, gamma, &self.measured.coverage);
             for (slope, k) in by_coverage.iter_mut().zip(pull) {
-                *slope += protein.gradient_energy * k;
+                *slope += k;
             }
         }
         let mut own_stiffness = vec![0.0; n];

@@ -2,7 +2,7 @@
 
 use super::assemble::{Freedom, PositiveStress};
 use super::connectivity::Connectivity;
-use crate::energy::interface::{self, DoubleWell};
+use crate::energy::interface::{self, GradientEnergy};
 use crate::energy::total::{Measured, rim_condition};
 use crate::energy::{bending, gaussian};
 use crate::parameters::{AreaCondition, Parameters, Rim};
@@ -96,20 +96,19 @@ pub fn forces(
         .collect();
     let mut interface_potential = Vec::new();
     let mut soft = vec![Vec3::zeros(); n];
-    if let Some(phases) = &parameters.phases {
-        let well = DoubleWell::new(phases);
+    if parameters.phases.is_some() {
         let u = &measured.order;
-        let local: Vec<f64> = u.iter().map(|u| well.value(*u)).collect();
-        interface_potential = interface::potential(mesh, geometry, &well, u);
-        let gamma = well.gradient_energy;
+        let local = measured.interface.local_energy(u);
+        interface_potential = interface::potential(mesh, geometry, &measured.interface, u);
+        let gamma = measured.interface.gamma();
         interface::add_balanced_gradient(
             mesh, geometry, &local, gamma, u, &interface_potential, &mut soft,
         );
         for (t, corners) in mesh.triangles.iter().enumerate() {
-            let (isotropic, slope) = interface::triangle_stress(geometry, t, corners, &local, gamma, u);
+            let (isotropic, slope) = interface::triangle_stress(geometry, t, corners, &local, gamma.of(t), u);
             let steep = slope.norm_squared();
             stress[t].along += isotropic;
-            stress[t].across += isotropic - gamma * steep;
+            stress[t].across += isotropic - gamma.of(t) * steep;
             if steep > 0.0 {
                 stress[t].direction = slope / steep.sqrt();
             }
@@ -119,17 +118,18 @@ pub fn forces(
         && protein.gradient_energy > 0.0
     {
         let theta = &measured.coverage;
-        let potential: Vec<f64> = interface::stiffness_times(mesh, geometry, theta)
+        let gamma = GradientEnergy::Uniform(protein.gradient_energy);
+        let potential: Vec<f64> = interface::stiffness_times(mesh, geometry, gamma, theta)
             .iter()
             .zip(&geometry.vertex_area)
-            .map(|(k, a)| protein.gradient_energy * k / a)
+            .map(|(k, a)| k / a)
             .collect();
         let local = vec![0.0; n];
         interface::add_balanced_gradient(
             mesh,
             geometry,
             &local,
-            protein.gradient_energy,
+            gamma,
             theta,
             &potential,
             &mut soft,

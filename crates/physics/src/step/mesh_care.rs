@@ -75,6 +75,9 @@ impl Simulation {
             ALLOWANCE * released.max(0.0) + self.state.ledger.mesh_credit
         };
         let before = self.energies.total();
+        if care.adapt && self.state.ledger.accepted % SIZING_EVERY == 0 {
+            self.narrow_interface(&care, allowance)?;
+        }
         // What is too dear as a whole may be done in part.
         let n = self.state.mesh.n_vertices();
         for most_vertices in [care.most_vertices, (n + n / 50).min(care.most_vertices)] {
@@ -113,6 +116,9 @@ impl Simulation {
                 }
             }
             let mut fields = vec![state.tension.clone()];
+            if !state.interface_width.is_empty() {
+                fields.push(state.interface_width.clone());
+            }
             fields.extend((0..3).map(|axis| state.velocity.iter().map(|v| v[axis]).collect()));
             VertexData { amounts, fields }
         };
@@ -168,12 +174,13 @@ impl Simulation {
     fn wanted_sizes(&self, care: &MeshCare) -> Result<Vec<f64>, PhysicsError> {
         let (mesh, geometry) = (&self.state.mesh, &self.measured.geometry);
         let mut wanted = curvature_size(mesh, &self.connectivity.topology, geometry, care.edges_per_radius)?;
-        if let Some(phases) = &self.parameters.phases {
-            let across = 2.0 * phases.interface_width / care.edges_per_interface;
+        if self.parameters.phases.is_some() {
             for (t, corners) in mesh.triangles.iter().enumerate() {
                 // tanh(x/ε) has the slope 1/ε in its middle; a third of it is where u = ±0.8. Noise must stay below.
                 let slope = triangle_gradient(geometry, t, corners, &self.measured.order).norm();
-                if slope * phases.interface_width > 0.35 {
+                let width = corners.iter().map(|&v| self.state.interface_width[v as usize]).sum::<f64>() / 3.0;
+                if slope * width > 0.35 {
+                    let across = 2.0 * width / care.edges_per_interface;
                     for &v in corners {
                         let w = &mut wanted[v as usize];
                         *w = w.min(across);
@@ -229,6 +236,9 @@ impl Simulation {
         }
         let mut fields = proposal.data.fields.into_iter();
         state.tension = fields.next().unwrap_or_default();
+        if !state.interface_width.is_empty() {
+            state.interface_width = fields.next().unwrap_or_default();
+        }
         state.velocity = vec![Vec3::zeros(); state.mesh.n_vertices()];
         for (axis, list) in fields.enumerate() {
             for (v, value) in state.velocity.iter_mut().zip(list) {

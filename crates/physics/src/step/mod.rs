@@ -11,5 +11,6 @@ pub mod forces;
 pub mod mechanics;
 pub mod memory;
 pub mod mesh_care;
+mod narrowing;
 pub mod pattern;
 pub mod rezone;

@@ -2,7 +2,7 @@
 //!
 //! With lipid amounts m, cotangent matrix K, mobility-weighted cotangent matrix K_M and integrated local slope s:
 //!
-//! m μ = s(c) + γ K c,  m (c' − c)/dt = −K_M μ'.
+//! m μ = s(c) + K c (K weighted by γ),  m (c' − c)/dt = −K_M μ'.
 //!
 //! The local slope is linearised about the old field: of the usual forms this one has the right rate (1 % at
 //! s·dt = 0.02, where convex splitting loses 10–30 % at 0.1). One symmetric quasi-definite solve with two unknowns
@@ -12,6 +12,7 @@
 //! Cahn & Hilliard, J. Chem. Phys. 28 (1958) 258.
 
 use crate::PhysicsError;
+use crate::energy::interface::GradientEnergy;
 use pellicle_sparse::{Analysis, Factor, Pattern};
 use pellicle_surface::geometry::Geometry;
 use pellicle_surface::{Mesh, Topology, Vec3};
@@ -42,7 +43,7 @@ pub struct DiffusionInput<'a> {
     /// ∂²F_local/∂c_i², integrated over the cell [energy].
     pub curvature: &'a [f64],
     /// γ in γ/2 |∇c|² [energy].
-    pub gradient_energy: f64,
+    pub gradient_energy: GradientEnergy<'a>,
     /// Mobility at vertices [length⁴/(energy·time)].
     pub mobility: &'a [f64],
     /// Time step.
@@ -134,6 +135,7 @@ impl DiffusionSolver {
         self.values.fill(0.0);
         for (t, corners) in input.mesh.triangles.iter().enumerate() {
             let area = input.geometry.area[t];
+            let gamma = input.gradient_energy.of(t);
             let mobility =
                 corners.iter().map(|&v| input.mobility[v as usize]).sum::<f64>() / 3.0;
             for a in 0..3 {
@@ -141,7 +143,7 @@ impl DiffusionSolver {
                     if let Some((field, potential)) = self.entries[t][a][b] {
                         let stiffness =
                             area * input.geometry.gradients[t][a].dot(&input.geometry.gradients[t][b]);
-                        self.values[field as usize] += input.gradient_energy * stiffness;
+                        self.values[field as usize] += gamma * stiffness;
                         self.values[potential as usize] -= input.step * mobility * stiffness;
                     }
                 }
