@@ -10,27 +10,28 @@ mod evidence;
 use evidence::fit::order_in_vertices;
 use evidence::geometry::Bare;
 use evidence::harmonics::harmonic;
+use evidence::phases::FrozenPhases;
 use evidence::record::Record;
 use evidence::{Fallible, LARGE, SEED, SMALL};
 use pellicle_physics::energy::interface::DoubleWell;
 use pellicle_physics::parameters::Phases;
-use pellicle_physics::transport::diffusion::{DiffusionInput, DiffusionSolver};
 use pellicle_surface::mesh::shapes::irregular_sphere;
 
 const SOURCE: &str = "linearised Cahn & Hilliard, J. Chem. Phys. 28 (1958) 258";
 const PHASES: Phases = Phases { line_tension: 1.0, interface_width: 0.4, diffusion_constant: 1.0, width_per_radius: 0.0 };
+/// γ = 3σε/4.
+const GRADIENT_ENERGY: f64 = 0.75 * PHASES.line_tension * PHASES.interface_width;
 
 fn exact(l: usize, mean: f64) -> f64 {
-    let well = DoubleWell::new(&PHASES);
+    let well = DoubleWell::new(PHASES.line_tension, PHASES.interface_width);
     let product = (l * (l + 1)) as f64;
-    -well.mobility(1.0) * product * (well.curvature(mean) + well.gradient_energy * product)
+    -well.mobility(1.0) * product * (well.curvature(mean) + GRADIENT_ENERGY * product)
 }
 
 /// Rate of the projection on Y_l, mean over three orders m.
 fn rate(n: usize, l: usize, mean: f64, step: f64) -> Result<f64, Box<dyn std::error::Error>> {
     let bare = Bare::new(irregular_sphere(n, SEED)?)?;
-    let well = DoubleWell::new(&PHASES);
-    let mut solver = DiffusionSolver::new(&bare.topology, &bare.mesh.positions)?;
+    let mut phases = FrozenPhases::new(&bare, &PHASES)?;
     let area = &bare.geometry.vertex_area;
     let orders = [0, 1, -2];
     let mut sum = 0.0;
@@ -40,21 +41,7 @@ fn rate(n: usize, l: usize, mean: f64, step: f64) -> Result<f64, Box<dyn std::er
         let project = |field: &[f64]| -> f64 { (0..n).map(|i| area[i] * shape[i] * (field[i] - mean)).sum() };
         let before = project(&field);
         for _ in 0..2 {
-            let slope: Vec<f64> = (0..n).map(|i| area[i] * well.slope(field[i])).collect();
-            let curvature: Vec<f64> = (0..n).map(|i| area[i] * well.curvature(field[i])).collect();
-            field = solver
-                .step(&DiffusionInput {
-                    mesh: &bare.mesh,
-                    geometry: &bare.geometry,
-                    lipid: area,
-                    field: &field,
-                    slope: &slope,
-                    curvature: &curvature,
-                    gradient_energy: well.gradient_energy,
-                    mobility: &vec![well.mobility(1.0); n],
-                    step,
-                })?
-                .field;
+            field = phases.diffuse(&field, step)?;
         }
         // Each step multiplies the mode by 1/(1 − s dt).
         sum += (1.0 - (before / project(&field)).sqrt()) / step;
@@ -65,7 +52,7 @@ fn rate(n: usize, l: usize, mean: f64, step: f64) -> Result<f64, Box<dyn std::er
 /// Every case within the limit; the order is that of the largest error of each level, as single errors pass zero.
 fn check(degrees: &[usize], levels: &[usize], limit: f64, least_order: f64) -> Fallible {
     let vertices: Vec<f64> = levels.iter().map(|n| *n as f64).collect();
-    let well = DoubleWell::new(&PHASES);
+    let well = DoubleWell::new(PHASES.line_tension, PHASES.interface_width);
     let mut worst = vec![0.0f64; levels.len()];
     let mut last = Vec::new();
     for &l in degrees {
@@ -79,7 +66,7 @@ fn check(degrees: &[usize], levels: &[usize], limit: f64, least_order: f64) -> F
             // Where growth and decay nearly cancel, relative to the larger of the two.
             let product = (l * (l + 1)) as f64;
             let scale =
-                well.mobility(1.0) * product * well.curvature(mean).abs().max(well.gradient_energy * product);
+                well.mobility(1.0) * product * well.curvature(mean).abs().max(GRADIENT_ENERGY * product);
             let quantity = format!("rate of composition wave l = {l}, u₀ = {mean} (error relative to its larger part)");
             let mut record = Record::of("composition_dispersion", &quantity, SOURCE, expected, "vertices", measured, limit);
             record.errors = record.measured.iter().map(|(_, value)| (value - expected) / scale).collect();

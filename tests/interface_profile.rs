@@ -10,11 +10,10 @@ mod evidence;
 
 use evidence::fit::order_in_size;
 use evidence::geometry::Bare;
+use evidence::phases::FrozenPhases;
 use evidence::record::Record;
 use evidence::{Fallible, SEED};
-use pellicle_physics::energy::interface::{self, DoubleWell};
 use pellicle_physics::parameters::Phases;
-use pellicle_physics::transport::diffusion::{DiffusionInput, DiffusionSolver};
 use pellicle_surface::mesh::shapes::irregular_tube;
 use std::f64::consts::TAU;
 
@@ -28,8 +27,7 @@ fn measure(across: f64) -> Result<[f64; 2], Box<dyn std::error::Error>> {
     let edge = 2.0 * PHASES.interface_width / across;
     let count = (TAU * RADIUS * LENGTH / (0.75f64.sqrt() * edge * edge)).round() as usize;
     let bare = Bare::new(irregular_tube(RADIUS, LENGTH, count, SEED)?)?;
-    let well = DoubleWell::new(&PHASES);
-    let mut solver = DiffusionSolver::new(&bare.topology, &bare.mesh.positions)?;
+    let mut phases = FrozenPhases::new(&bare, &PHASES)?;
     let area = &bare.geometry.vertex_area;
     let n = count;
     let profile = |z: f64, first: f64, second: f64| {
@@ -39,26 +37,11 @@ fn measure(across: f64) -> Result<[f64; 2], Box<dyn std::error::Error>> {
     // Started too wide, so that the profile is a result.
     let mut field: Vec<f64> =
         z.iter().map(|z| ((z - 1.0) / 0.3).tanh() * ((3.0 - z) / 0.3).tanh()).collect();
-    let energy = |field: &[f64]| interface::energy(&bare.mesh, &bare.geometry, &well, field);
-    let mut before = energy(&field);
+    let mut before = phases.energy(&field);
     for round in 0..400 {
-        let slope: Vec<f64> = (0..n).map(|i| area[i] * well.slope(field[i])).collect();
-        let curvature: Vec<f64> = (0..n).map(|i| area[i] * well.curvature(field[i])).collect();
         let step = 0.005 * 1.1f64.powi(round.min(50));
-        field = solver
-            .step(&DiffusionInput {
-                mesh: &bare.mesh,
-                geometry: &bare.geometry,
-                lipid: area,
-                field: &field,
-                slope: &slope,
-                curvature: &curvature,
-                gradient_energy: well.gradient_energy,
-                mobility: &vec![well.mobility(1.0); n],
-                step,
-            })?
-            .field;
-        let now = energy(&field);
+        field = phases.diffuse(&field, step)?;
+        let now = phases.energy(&field);
         if round > 20 && (before - now).abs() < 1e-9 * now {
             break;
         }

@@ -6,6 +6,7 @@ pub mod fit;
 pub mod geometry;
 pub mod harmonics;
 pub mod motion;
+pub mod phases;
 pub mod record;
 pub mod viscous;
 
