@@ -54,6 +54,8 @@ pub enum Command {
 Examples:
   pellicle run vesicle.toml
   pellicle run vesicle.toml --out trial --set membrane.bending_rigidity=\"25 kBT\"
+  pellicle run vesicle.toml --start-from soft-run --set membrane.bending_rigidity=\"30 kBT\"
+                                                        from the end state of another run
   pellicle run vesicle.toml --quiet --progress json     under a scheduler
 
 Ctrl-C (or SIGTERM) finishes the step, writes a checkpoint and says how to go on; a second one ends at once.")]
@@ -121,6 +123,9 @@ pub struct Run {
     /// Replace one entry of the scenario, as in time.end="5 s"; may be given again.
     #[arg(long = "set", value_name = "KEY=VALUE")]
     pub set: Vec<String>,
+    /// Start from the end state of the run in this directory, with the parameters of this scenario.
+    #[arg(long, value_name = "DIR", value_hint = ValueHint::DirPath)]
+    pub start_from: Option<PathBuf>,
     /// Replace an earlier run in the directory (deletes the files of a run there, nothing else).
     #[arg(long)]
     pub force: bool,

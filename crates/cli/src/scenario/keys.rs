@@ -130,6 +130,7 @@ pub const ROOT: &[Key] = &[
     key("temperature", Quantity(m::TEMPERATURE, Positive), "\"298 K\"", "temperature; sets kBT").or("\"298 K\""),
     key("seed", Whole(0, i64::MAX), "1", "seed of all randomness: bumps, irregular meshes, noise").or("1"),
     key("include", Path, "\"base.toml\"", "another scenario whose keys are used where this one is silent"),
+    key("start_from", Path, "\"other-run\"", "directory of a run whose end state this one starts from; [surface] then only sets scales and edge lengths"),
     section("surface", SURFACE, "shape of the membrane at the start and its mesh"),
     section("membrane", MEMBRANE, "material of the membrane; where composition is given, of the phase with composition 0"),
     section("lipids", LIPIDS, "how the amount of lipid is set"),

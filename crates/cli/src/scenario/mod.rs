@@ -13,6 +13,7 @@ mod problem;
 mod read;
 mod schema;
 mod source;
+mod start_state;
 mod surface;
 #[cfg(test)]
 mod tests;
@@ -24,7 +25,7 @@ pub use schema::schema;
 use crate::setup::{Cadence, Setup, StopRules};
 use crate::units::measure as m;
 use keys::{Key, Kind, ROOT};
-use pellicle_physics::State;
+use pellicle_physics::{Parameters, State};
 use problem::{Place, Problem};
 use read::Reader;
 use source::{Data, Gather, Node};
@@ -84,7 +85,9 @@ fn finish(
     if !problems.is_empty() || !gather.problems.is_empty() {
         return Err(error(gather, problems));
     }
-    surface::resolve_path(&mut values, &gather.folders);
+    for path in ["surface.file", "start_from"] {
+        surface::resolve_path(&mut values, path, &gather.folders);
+    }
     match ready(values, thermal_energy, title) {
         Ok(setup) => Ok(setup),
         Err(problem) => Err(error(gather, vec![problem])),
@@ -138,29 +141,20 @@ fn ready(mut values: Values, thermal_energy: f64, title: &str) -> Result<Setup, 
     physics::proportion(&values, &scales)?;
     physics::fill_scaled(&mut values, &scales, surface.mesh.n_vertices());
     let mut warnings = surface.warnings.clone();
-    let parameters = physics::parameters(&values, scales, &surface, &mut warnings)?;
-    let fields = fields::build(&values, &parameters, &surface)?;
-    let state = State::at_rest(
-        &parameters,
-        surface.mesh,
-        &fields.composition,
-        &fields.coverage,
-        &fields.marker,
-    )
-    .map_err(|error| {
-        Problem::new(
-            Some(Place::default()),
-            format!("the start state cannot be made: {error}"),
-            "",
-            "check [surface] and the start values of [composition] and [protein]",
-        )
-    })?;
+    let source = start_state::find(&values, &scales, &mut warnings)?;
+    let mesh = source.as_ref().map_or(&surface.mesh, |source| &source.state.mesh);
+    let parameters = physics::parameters(&values, scales, &surface, mesh, &mut warnings)?;
+    let (state, origin) = match source {
+        Some(source) => (source.state_for(&values, &parameters, &surface.mesh)?, Some(source.origin)),
+        None => (fresh_state(&values, &parameters, surface)?, None),
+    };
     let in_units = |path: &str, measure| values.number(path).map(|x| x / scales.of(&measure));
     Ok(Setup {
         title: values.text("title").to_string(),
         scales,
         parameters,
         state,
+        origin,
         stop: StopRules {
             time: in_units("time.end", m::TIME).unwrap_or(0.0),
             neck_radius: in_units("stop.neck_radius", m::LENGTH),
@@ -176,6 +170,19 @@ fn ready(mut values: Values, thermal_energy: f64, title: &str) -> Result<Setup, 
         seed: values.whole("seed").unwrap_or(0) as u64,
         resolved: values.to_toml(),
         warnings,
+    })
+}
+
+/// The shape and the fields that the scenario describes.
+fn fresh_state(values: &Values, parameters: &Parameters, surface: surface::Surface) -> Result<State, Problem> {
+    let fields = fields::build(values, parameters, &surface)?;
+    State::at_rest(parameters, surface.mesh, &fields.composition, &fields.coverage, &fields.marker).map_err(|error| {
+        Problem::new(
+            Some(Place::default()),
+            format!("the start state cannot be made: {error}"),
+            "",
+            "check [surface] and the start values of [composition] and [protein]",
+        )
     })
 }
 
