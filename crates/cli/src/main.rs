@@ -6,6 +6,7 @@ mod failure;
 mod run;
 mod scenario;
 mod setup;
+mod study;
 mod units;
 
 use args::{Arguments, Command};
@@ -40,7 +41,8 @@ fn dispatch(arguments: &Arguments) -> Result<u8, Failure> {
         Command::Check(check) => commands::check::run(check),
         Command::Measure(measure) => commands::measure::run(measure),
         Command::Report(report) => commands::report::run(report),
-        Command::Schema => commands::schema::run(),
+        Command::Scan(scan) => commands::scan::run(scan),
+        Command::Schema { of } => commands::schema::run(*of),
         Command::Completions { shell } => commands::completions::run(*shell),
     }
 }
