@@ -1,8 +1,8 @@
 //! `pellicle report`.
 
-mod colours;
+pub mod colours;
 mod data;
-mod page;
+pub mod page;
 mod plot;
 mod snapshot;
 

@@ -2,6 +2,7 @@
 
 use super::closing;
 use crate::args;
+use crate::error_bars;
 use crate::failure::Failure;
 use crate::run::progress::Progress;
 use crate::run::{folder, start, words};
@@ -13,6 +14,9 @@ use serde_json::json;
 /// # Errors
 /// See [`Failure`].
 pub fn run(arguments: &args::Run) -> Result<u8, Failure> {
+    if !arguments.error_bars.is_empty() {
+        return error_bars::run::run(arguments, &overrides(arguments), &arguments.error_bars);
+    }
     let folder = arguments.out.clone().unwrap_or_else(|| folder::default_folder(&arguments.scenario));
     folder::check_free(&folder, &arguments.scenario, arguments.force)?;
     let threads = start::use_threads(arguments.manner.threads)?;
@@ -36,7 +40,7 @@ pub fn run(arguments: &args::Run) -> Result<u8, Failure> {
 }
 
 /// What is laid over the scenario.
-pub fn overrides(arguments: &args::Run) -> Vec<String> {
+fn overrides(arguments: &args::Run) -> Vec<String> {
     let mut overrides = arguments.set.clone();
     if let Some(origin) = &arguments.start_from {
         let origin = std::path::absolute(origin).unwrap_or_else(|_| origin.clone());

@@ -138,6 +138,7 @@ fn summary(plan: &Plan, now: &Checkpoint, row: &Row, outcome: &Outcome) -> Value
             "seed": plan.seed,
             "threads": now.accounts.threads,
             "resumed": now.accounts.resumed,
+            "warnings_of_resuming": outcome.warnings,
             "machine": {
                 "system": std::env::consts::OS,
                 "architecture": std::env::consts::ARCH,

@@ -68,6 +68,8 @@ pub enum Kind {
     Section(&'static [Key]),
     /// A list of tables.
     Sections(&'static [Key]),
+    /// Anything; who asks for it looks at it.
+    Loose,
 }
 
 /// One key.
@@ -85,7 +87,8 @@ pub struct Key {
     pub about: &'static str,
 }
 
-const fn key(name: &'static str, kind: Kind, example: &'static str, about: &'static str) -> Key {
+/// A key without default.
+pub const fn key(name: &'static str, kind: Kind, example: &'static str, about: &'static str) -> Key {
     Key {
         name,
         kind,
@@ -96,13 +99,15 @@ const fn key(name: &'static str, kind: Kind, example: &'static str, about: &'sta
 }
 
 impl Key {
-    const fn or(mut self, default: &'static str) -> Self {
+    /// With a default, as TOML.
+    pub const fn or(mut self, default: &'static str) -> Self {
         self.default = Some(default);
         self
     }
 }
 
-const fn section(name: &'static str, keys: &'static [Key], about: &'static str) -> Key {
+/// A table.
+pub const fn section(name: &'static str, keys: &'static [Key], about: &'static str) -> Key {
     key(name, Kind::Section(keys), "", about)
 }
 
@@ -294,7 +299,12 @@ const STOP: &[Key] = &[
 
 /// The key at a dotted path; items of lists are left out (`load.path.time`).
 pub fn find(path: &str) -> Option<&'static Key> {
-    let mut keys = ROOT;
+    find_in(ROOT, path)
+}
+
+/// As [`find`], in another list of keys.
+pub fn find_in(root: &'static [Key], path: &str) -> Option<&'static Key> {
+    let mut keys = root;
     let mut found = None;
     for part in path.split('.') {
         let key = keys.iter().find(|key| key.name == part)?;

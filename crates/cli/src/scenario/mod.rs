@@ -7,20 +7,20 @@
 
 mod checks;
 mod fields;
-mod keys;
+pub mod keys;
 mod physics;
-mod problem;
-mod read;
+pub mod problem;
+pub mod read;
 mod schema;
-mod source;
+pub mod source;
 mod start_state;
 mod surface;
 #[cfg(test)]
 mod tests;
-mod values;
+pub mod values;
 
 pub use problem::ScenarioError;
-pub use schema::schema;
+pub use schema::{schema, schema_of};
 
 use crate::setup::{Cadence, Setup, StopRules};
 use crate::units::measure as m;
@@ -94,7 +94,34 @@ fn finish(
     }
 }
 
-fn error(mut gather: Gather, problems: Vec<Problem>) -> ScenarioError {
+/// What decides the course of a run with overrides, as [`Values::content`] writes it, without making its mesh; and
+/// kBT [J].
+///
+/// # Errors
+/// [`ScenarioError`] for values that cannot be read; whether they fit each other shows when the run starts.
+pub fn content(
+    base: &Gather,
+    tree: &Node,
+    overrides: &[String],
+    hash: &dyn Fn(&str) -> String,
+) -> Result<(String, f64), ScenarioError> {
+    let (tree, gather) = base.laid_over(tree, overrides);
+    let mut reader = Reader::new(&gather.sources);
+    let (mut values, thermal_energy) = reader.scenario(&tree);
+    let problems = reader.problems;
+    if !problems.is_empty() || !gather.problems.is_empty() {
+        return Err(error(gather, problems));
+    }
+    for path in ["surface.file", "start_from"] {
+        surface::resolve_path(&mut values, path, &gather.folders);
+    }
+    fill_from_list(&mut values, ROOT, "");
+    physics::fill_plain(&mut values);
+    Ok((values.content(hash), thermal_energy))
+}
+
+/// The faults found while texts were gathered, and others, in the order of the text.
+pub fn error(mut gather: Gather, problems: Vec<Problem>) -> ScenarioError {
     gather.problems.extend(problems);
     // In the order of the text.
     gather.problems.sort_by_key(|problem| {
