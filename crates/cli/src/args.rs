@@ -106,6 +106,7 @@ The page is a single HTML file without scripts or links; it opens in any browser
 Examples:
   pellicle scan study.toml                    all runs, as many at a time as the study says; again to go on
   pellicle scan study.toml --parallel 8 --memory \"24 GB\" --quiet --progress json
+  pellicle scan threshold.toml                continuation and thresholds need no axes
   pellicle scan study.toml --list             names and parameters of the runs, with tabs
   pellicle scan study.toml --only r3f2a9      one run (a task on a cluster); then, once:
   pellicle scan study.toml --gather           table, diagram and page of what is there
@@ -126,6 +127,22 @@ A study file:
   [[outcome]]
   name = \"budded\"
   when = 'neck_radius < \"0.2 um\" and domain_count >= 2'
+
+What follows from run to run:
+  [[continuation]]                  each run starts from the end of the one before, there and back; drawn
+  key = \"composition.line_tension\"
+  from = \"0.1 pN\"
+  to = \"1 pN\"
+  count = 10
+  column = \"neck_radius\"
+  [[threshold]]                     the value at which the outcome changes, with its error bar
+  key = \"composition.line_tension\"
+  from = \"0.1 pN\"
+  to = \"1 pN\"
+  tolerance = 0.01
+  start = \"branch\"
+  direction = \"both\"
+  refine = [\"mesh\", \"interface\"]
 
 `pellicle schema --of study` has all keys. A run is named by what decides its course: changed or added values make
 new runs and keep the old. Ctrl-C lets all runs write checkpoints; whatever happened, the same command goes on.

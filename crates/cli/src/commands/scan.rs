@@ -11,7 +11,7 @@ use crate::study::expand::{Run, expand};
 use crate::study::launch::Job;
 use crate::study::pool::{Event, Pool};
 use crate::study::record::{State, retry, settle};
-use crate::study::{Study, read, results};
+use crate::study::{Study, branch, read, results};
 use progress::Progress;
 use std::fs;
 use std::path::{Path, PathBuf};
@@ -70,7 +70,16 @@ pub fn run(arguments: &args::Scan) -> Result<u8, Failure> {
     }
     prepare(&scan.folder)?;
     let interrupt = Interrupt::watch().map_err(|error| Failure::Files(format!("cannot watch signals: {error}")))?;
-    if arguments.only.is_empty() { all(&scan, arguments, &interrupt) } else { some(&scan, arguments, &interrupt) }
+    if !arguments.only.is_empty() {
+        return some(&scan, arguments, &interrupt);
+    }
+    let varied = !study.axes.is_empty() || !study.seeds.is_empty();
+    let code = if varied { all(&scan, arguments, &interrupt)? } else { 0 };
+    if code != 0 || study.branches.is_empty() {
+        return Ok(code);
+    }
+    let _lock = Lock::take(&scan.folder)?;
+    branch::run(&study, &scan.folder, scan.threads, arguments.quiet, &interrupt)
 }
 
 /// The directory a study's results go to when none is given: its name with `-scan`.

@@ -241,6 +241,7 @@ const SPOT: &[Key] = &[
     key("centre", Vector(m::LENGTH), ANY_POINT, "point on the membrane"),
     key("direction", Direction, "[0, 0, 1]", "direction from the middle of the surface, instead of a point"),
     key("radius", Quantity(m::LENGTH, Positive), "\"1 um\"", "radius of the spot"),
+    key("rim_width", Quantity(m::LENGTH, Positive), "\"0.1 um\"", "half width of its rim, which follows tanh(distance/width); left out: the mean edge length"),
 ];
 
 const SURROUNDINGS: &[Key] = &[

@@ -51,6 +51,28 @@ impl Axis {
     }
 }
 
+impl Axis {
+    /// The values at a share of the way, with all digits; the ends as written. Of a list of values, the nearest.
+    pub fn at(&self, share: f64, thermal_energy: f64) -> Vec<Node> {
+        let Some((from, to)) = &self.ends else {
+            let last = self.points.len().saturating_sub(1);
+            return self.points.get((share * last as f64).round() as usize).cloned().unwrap_or_default();
+        };
+        if share == 0.0 || share == 1.0 {
+            return if share == 0.0 { from.clone() } else { to.clone() };
+        }
+        let ends = from.iter().zip(to).zip(&self.keys);
+        ends.map(|((from, to), (_, key))| between(key, from, to, share, self.logarithmic, DIGITS, thermal_energy))
+            .collect()
+    }
+
+    /// The first of its values, in SI.
+    pub fn value(&self, nodes: &[Node], thermal_energy: f64) -> f64 {
+        let first = self.keys.first().zip(nodes.first());
+        first.and_then(|((_, key), node)| Amount::of(key, node, thermal_energy)).map_or(f64::NAN, |amount| amount.si)
+    }
+}
+
 /// Read `[set]`: a table in the shape of a scenario.
 pub fn settings(reader: &mut Reader<'_>, node: &Node, folder: &Path) -> Vec<Setting> {
     let mut found = Vec::new();

@@ -5,7 +5,7 @@
 
 mod draw;
 mod raster;
-mod scale;
+pub mod scale;
 
 pub use draw::draw;
 pub use raster::to_png;

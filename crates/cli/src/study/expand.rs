@@ -141,7 +141,7 @@ pub fn name_of(content: &str) -> String {
 }
 
 /// What stands for a file: its content, or its path while it cannot be read.
-fn file_hash(path: &str) -> String {
+pub fn file_hash(path: &str) -> String {
     std::fs::read(path).map_or_else(|_| path.to_owned(), |bytes| hexadecimal(&Sha256::digest(bytes)))
 }
 

@@ -5,6 +5,7 @@
 //! of this program ([`launch`]).
 
 pub mod axes;
+pub mod branch;
 pub mod diagram;
 pub mod expand;
 pub mod keys;
@@ -48,6 +49,8 @@ pub struct Study {
     pub seeds: Vec<i64>,
     /// Classes of outcomes.
     pub rules: rules::Rules,
+    /// What follows from run to run.
+    pub branches: branch::Wishes,
     /// What the diagram shows.
     pub diagram: DiagramWish,
     /// What the runs may take of the machine.

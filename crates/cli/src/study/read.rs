@@ -1,6 +1,7 @@
 //! From a study file to a [`Study`], with faults shown at their place.
 
 use super::axes::{self, Axis};
+use super::branch;
 use super::keys::{MOST_RUNS, STUDY};
 use super::rules::{self, Rules};
 use super::{DiagramWish, Limits, Study, Upwards, shown};
@@ -85,6 +86,7 @@ fn parts(reader: &mut Reader<'_>, values: &Values, folder: &Path, thermal_energy
     let varies = axes.iter().flat_map(|axis| &axis.keys).any(|(path, _)| warm(path))
         || shared.iter().any(|setting| warm(&setting.path));
     let rules = outcomes(reader, values, (!varies).then_some(thermal_energy));
+    let branches = branch::wish::read(reader, values, &rules, folder);
     let diagram = if complete { diagram(reader, values, &axes) } else { DiagramWish::default() };
     let limits = Limits {
         parallel: values.whole("limits.parallel").map(|n| n as usize),
@@ -103,6 +105,7 @@ fn parts(reader: &mut Reader<'_>, values: &Values, folder: &Path, thermal_energy
         design,
         seeds,
         rules,
+        branches,
         diagram,
         limits,
     }
@@ -148,8 +151,9 @@ fn look_at_axes(
     designed: bool,
 ) {
     let repeated = values.place("repeats.count").or_else(|| values.place("repeats.seeds"));
-    if axes.is_empty() && repeated.is_none() {
-        let mend = "add [[axis]] with key and values, or [repeats] with count";
+    let follows = values.given("continuation") || values.given("threshold");
+    if axes.is_empty() && repeated.is_none() && !follows {
+        let mend = "add [[axis]] with key and values, [repeats] with count, [[continuation]] or [[threshold]]";
         problem(reader, Some(Place::default()), "the study varies nothing".into(), "", mend);
     }
     let mut told: Vec<&str> = Vec::new();
