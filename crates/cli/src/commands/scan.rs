@@ -195,8 +195,12 @@ fn all(scan: &Scan<'_>, arguments: &args::Scan, interrupt: &Interrupt) -> Result
     results::write(scan.study, scan.runs, &states, &scan.folder)?;
     progress.end(&states, &scan.folder);
     closing(scan, &states, arguments.quiet || progress.is_for_programs());
-    let interrupted = states.iter().any(|state| matches!(state, State::Unfinished));
-    Ok(if interrupted { INTERRUPTED } else { 0 })
+    Ok(match &states {
+        states if states.iter().any(|state| matches!(state, State::Unfinished)) => INTERRUPTED,
+        // The machine, not the study, was at fault: the next start tries again.
+        states if states.iter().any(|state| matches!(state, State::Failed { lasting: false, .. })) => 3,
+        _ => 0,
+    })
 }
 
 /// The last lines: how many ended how, what failed, where the files are.
