@@ -181,9 +181,9 @@ pub struct Run {
     #[arg(long, value_name = "DIR", value_hint = ValueHint::DirPath)]
     pub start_from: Option<PathBuf>,
     /// Run coarser levels of mesh, time step or interface width, too, and tell every number with its error bar.
-    #[arg(long, value_name = "WHAT", value_delimiter = ',', num_args = 0..=1, require_equals = true,
-          default_missing_value = "mesh,time", conflicts_with = "start_from")]
-    pub error_bars: Vec<String>,
+    #[arg(long, value_name = "WHAT", num_args = 0..=1, require_equals = true, default_missing_value = "mesh,time",
+          conflicts_with = "start_from")]
+    pub error_bars: Option<String>,
     /// Replace an earlier run in the directory (deletes the files of a run there, nothing else).
     #[arg(long)]
     pub force: bool,

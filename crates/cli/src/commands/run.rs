@@ -14,8 +14,8 @@ use serde_json::json;
 /// # Errors
 /// See [`Failure`].
 pub fn run(arguments: &args::Run) -> Result<u8, Failure> {
-    if !arguments.error_bars.is_empty() {
-        return error_bars::run::run(arguments, &overrides(arguments), &arguments.error_bars);
+    if let Some(names) = &arguments.error_bars {
+        return error_bars::run::run(arguments, &overrides(arguments), names);
     }
     let folder = arguments.out.clone().unwrap_or_else(|| folder::default_folder(&arguments.scenario));
     folder::check_free(&folder, &arguments.scenario, arguments.force)?;

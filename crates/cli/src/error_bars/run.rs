@@ -20,14 +20,14 @@ const LEVELS_FOLDER: &str = "levels";
 ///
 /// # Errors
 /// See [`Failure`]; a level that cannot be run at all ends it.
-pub fn run(arguments: &args::Run, overrides: &[String], names: &[String]) -> Result<u8, Failure> {
+pub fn run(arguments: &args::Run, overrides: &[String], names: &str) -> Result<u8, Failure> {
     let out = arguments.out.clone().unwrap_or_else(|| folder::default_folder(&arguments.scenario));
     let refinements = names
-        .iter()
-        .map(|name| name.parse().map_err(|problem| Failure::Input(format!("--error-bars {name}: {problem}"))))
+        .split(',')
+        .map(|name| name.trim().parse::<Refinement>().map_err(|problem| Failure::Input(format!("--error-bars {name}: {problem}"))))
         .collect::<Result<Vec<Refinement>, Failure>>()?;
     let setup = scenario::load(&arguments.scenario, overrides)?;
-    let resolved = toml::from_str(&setup.resolved)
+    let resolved: toml::Table = toml::from_str(&setup.resolved)
         .map_err(|error| Failure::Numerical(format!("the scenario cannot be read back: {error}")))?;
     if arguments.force || !is_run_of(&out, &setup.resolved) {
         folder::check_free(&out, &arguments.scenario, arguments.force)?;

@@ -91,7 +91,7 @@ impl Bench<'_> {
         for ((path, _), node) in axis.keys.iter().zip(nodes) {
             overrides.push(Setting { path: path.clone(), node }.option());
         }
-        let (content, _) = crate::scenario::content(&study.texts, &study.base, &overrides, &|path| file_hash(path))
+        let (content, _) = crate::scenario::content(&study.texts, &study.base, &overrides, &file_hash)
             .map_err(Failure::from)?;
         let id = match origin {
             Some(origin) => name_of(&format!("{content}\nstarts from the end of {}\n", origin.id)),

@@ -147,7 +147,7 @@ fn refinements(reader: &mut Reader<'_>, item: &Values) -> Option<Vec<Refinement>
     };
     for part in list {
         match &part.data {
-            Data::Text(word) => match word.parse() {
+            Data::Text(word) => match word.parse::<Refinement>() {
                 Ok(refinement) => found.push(refinement),
                 Err(fault) => wrong(reader, part.place.clone(), format!("threshold: \"{word}\": {fault}"), example),
             },
