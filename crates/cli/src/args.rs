@@ -13,6 +13,7 @@ Examples:
   pellicle resume trial --until \"20 s\"            go on beyond the time it was planned for
   pellicle measure cell.ply --unit um             area, volume, curvature and faults of a surface
   pellicle report vesicle-run                     plots and pictures of a run as one HTML page
+  pellicle scan study.toml                        many runs, a table and a phase diagram
   pellicle schema > scenario.schema.json          everything a scenario may say, for editors
 
 Results of a run: series.csv opens in any spreadsheet or with pandas, fields.pvd in any viewer of VTK files,
@@ -54,6 +55,10 @@ pub enum Command {
 Examples:
   pellicle run vesicle.toml
   pellicle run vesicle.toml --out trial --set membrane.bending_rigidity=\"25 kBT\"
+  pellicle run vesicle.toml --start-from soft-run --set membrane.bending_rigidity=\"30 kBT\"
+                                                        from the end state of another run
+  pellicle run vesicle.toml --error-bars=mesh,time,interface
+                                                        every number of the end with its error bar
   pellicle run vesicle.toml --quiet --progress json     under a scheduler
 
 Ctrl-C (or SIGTERM) finishes the step, writes a checkpoint and says how to go on; a second one ends at once.")]
@@ -96,8 +101,59 @@ Examples:
 
 The page is a single HTML file without scripts or links; it opens in any browser and prints.")]
     Report(Report),
-    /// Print the JSON schema of scenarios, for editors that complete and check as you type.
-    Schema,
+    /// Run a scenario many times with some of its entries varied; make a table and a phase diagram of the outcomes.
+    #[command(after_long_help = "\
+Examples:
+  pellicle scan study.toml                    all runs, as many at a time as the study says; again to go on
+  pellicle scan study.toml --parallel 8 --memory \"24 GB\" --quiet --progress json
+  pellicle scan threshold.toml                continuation and thresholds need no axes
+  pellicle scan study.toml --list             names and parameters of the runs, with tabs
+  pellicle scan study.toml --only r3f2a9      one run (a task on a cluster); then, once:
+  pellicle scan study.toml --gather           table, diagram and page of what is there
+
+A study file:
+  scenario = \"vesicle.toml\"
+  [[axis]]
+  key = \"composition.line_tension\"
+  from = \"0.05 pN\"
+  to = \"0.8 pN\"
+  count = 5
+  spacing = \"logarithmic\"
+  [[axis]]
+  key = \"surface.reduced_volume\"
+  values = [0.7, 0.8, 0.9]
+  [repeats]
+  count = 3
+  [[outcome]]
+  name = \"budded\"
+  when = 'neck_radius < \"0.2 um\" and domain_count >= 2'
+
+What follows from run to run:
+  [[continuation]]                  each run starts from the end of the one before, there and back; drawn
+  key = \"composition.line_tension\"
+  from = \"0.1 pN\"
+  to = \"1 pN\"
+  count = 10
+  column = \"neck_radius\"
+  [[threshold]]                     the value at which the outcome changes, with its error bar
+  key = \"composition.line_tension\"
+  from = \"0.1 pN\"
+  to = \"1 pN\"
+  tolerance = 0.01
+  start = \"branch\"
+  direction = \"both\"
+  refine = [\"mesh\", \"interface\"]
+
+`pellicle schema --of study` has all keys. A run is named by what decides its course: changed or added values make
+new runs and keep the old. Ctrl-C lets all runs write checkpoints; whatever happened, the same command goes on.
+Runs that cannot be run or in which the solver gave up are listed with their reason and are no error of the scan.")]
+    Scan(Scan),
+    /// Print the JSON schema of scenarios or studies, for editors that complete and check as you type.
+    Schema {
+        /// What the schema describes.
+        #[arg(long, value_enum, default_value_t = Described::Scenario, value_name = "KIND")]
+        of: Described,
+    },
     /// Print the completions of a shell.
     #[command(after_long_help = "\
 Example:
@@ -121,6 +177,13 @@ pub struct Run {
     /// Replace one entry of the scenario, as in time.end="5 s"; may be given again.
     #[arg(long = "set", value_name = "KEY=VALUE")]
     pub set: Vec<String>,
+    /// Start from the end state of the run in this directory, with the parameters of this scenario.
+    #[arg(long, value_name = "DIR", value_hint = ValueHint::DirPath)]
+    pub start_from: Option<PathBuf>,
+    /// Run coarser levels of mesh, time step or interface width, too, and tell every number with its error bar.
+    #[arg(long, value_name = "WHAT", num_args = 0..=1, require_equals = true, default_missing_value = "mesh,time",
+          conflicts_with = "start_from")]
+    pub error_bars: Option<String>,
     /// Replace an earlier run in the directory (deletes the files of a run there, nothing else).
     #[arg(long)]
     pub force: bool,
@@ -189,6 +252,53 @@ pub struct Report {
     /// The page to write; one that is there is replaced.
     #[arg(long, short, value_name = "FILE", value_hint = ValueHint::FilePath, default_value = "report.html")]
     pub out: PathBuf,
+}
+
+/// Arguments of `scan`.
+#[derive(Debug, Args)]
+pub struct Scan {
+    /// The study, a TOML file.
+    #[arg(value_name = "STUDY", value_hint = ValueHint::FilePath)]
+    pub study: PathBuf,
+    /// Directory for the results [default: the study's name with -scan, in the current directory].
+    #[arg(long, short, value_name = "DIR", value_hint = ValueHint::DirPath)]
+    pub out: Option<PathBuf>,
+    /// Do this run only, without table and diagram; an id or its beginning; may be given again.
+    #[arg(long, value_name = "ID", conflicts_with_all = ["list", "gather"])]
+    pub only: Vec<String>,
+    /// Print ids, states and parameters of all runs, and do nothing.
+    #[arg(long, conflicts_with = "gather")]
+    pub list: bool,
+    /// Make table, diagram and page of what is there, without running anything.
+    #[arg(long)]
+    pub gather: bool,
+    /// Begin failed runs anew.
+    #[arg(long)]
+    pub retry_failed: bool,
+    /// Runs at a time [default: what the study says, or as many as there are cores].
+    #[arg(long, value_name = "N", value_parser = clap::value_parser!(u16).range(1..=1024))]
+    pub parallel: Option<u16>,
+    /// Threads of each run [default: what the study says, or 1].
+    #[arg(long, value_name = "N", value_parser = clap::value_parser!(u16).range(1..=1024))]
+    pub threads: Option<u16>,
+    /// Memory that all runs at a time may take, as in "24 GB" [default: what the study says, or any].
+    #[arg(long, value_name = "SIZE")]
+    pub memory: Option<String>,
+    /// Print errors only.
+    #[arg(long, short)]
+    pub quiet: bool,
+    /// How progress is shown.
+    #[arg(long, value_enum, default_value_t = Shown::Auto)]
+    pub progress: Shown,
+}
+
+/// What a schema describes.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, ValueEnum)]
+pub enum Described {
+    /// Scenarios.
+    Scenario,
+    /// Studies.
+    Study,
 }
 
 /// How a run goes and what it shows.

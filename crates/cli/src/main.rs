@@ -2,10 +2,12 @@
 
 mod args;
 mod commands;
+mod error_bars;
 mod failure;
 mod run;
 mod scenario;
 mod setup;
+mod study;
 mod units;
 
 use args::{Arguments, Command};
@@ -40,7 +42,8 @@ fn dispatch(arguments: &Arguments) -> Result<u8, Failure> {
         Command::Check(check) => commands::check::run(check),
         Command::Measure(measure) => commands::measure::run(measure),
         Command::Report(report) => commands::report::run(report),
-        Command::Schema => commands::schema::run(),
+        Command::Scan(scan) => commands::scan::run(scan),
+        Command::Schema { of } => commands::schema::run(*of),
         Command::Completions { shell } => commands::completions::run(*shell),
     }
 }

@@ -44,6 +44,15 @@ pub struct Cadence {
     pub checkpoint_seconds: f64,
 }
 
+/// The run whose end state another one starts from.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Origin {
+    /// Its directory.
+    pub folder: String,
+    /// `provenance.state_sha256` of its newest state.
+    pub state_sha256: String,
+}
+
 /// A run ready to start.
 #[derive(Clone, Debug)]
 pub struct Setup {
@@ -55,6 +64,8 @@ pub struct Setup {
     pub parameters: Parameters,
     /// State at the start.
     pub state: State,
+    /// The run that left this state, if one did.
+    pub origin: Option<Origin>,
     /// When to stop.
     pub stop: StopRules,
     /// How often what is written.

@@ -252,7 +252,7 @@ pub struct Quantity {
 }
 
 /// Length of the number at the start of a text.
-fn number_length(text: &str) -> usize {
+pub fn number_length(text: &str) -> usize {
     let bytes = text.as_bytes();
     let digits = |mut at: usize| {
         while bytes.get(at).is_some_and(u8::is_ascii_digit) {

@@ -1,6 +1,6 @@
 //! `pellicle check`.
 
-mod cost;
+pub mod cost;
 mod numbers;
 mod ranges;
 mod resolution;

@@ -7,4 +7,5 @@ pub mod measure;
 pub mod report;
 pub mod resume;
 pub mod run;
+pub mod scan;
 pub mod schema;

@@ -1,8 +1,9 @@
 //! `pellicle report`.
 
-mod colours;
+mod bars;
+pub mod colours;
 mod data;
-mod page;
+pub mod page;
 mod plot;
 mod snapshot;
 
@@ -84,11 +85,12 @@ fn document(runs: &[Run]) -> Result<String, Failure> {
     let mut sections = String::new();
     for run in runs {
         sections += &format!(
-            "<section><h2>{}: {}</h2>\n{}<h3>Shapes</h3>\n{}<details><summary>Parameters (scenario.toml)</summary>\
+            "<section><h2>{}: {}</h2>\n{}{}<h3>Shapes</h3>\n{}<details><summary>Parameters (scenario.toml)</summary>\
              <pre>{}</pre></details></section>\n",
             escape(&run.name),
             escape(&run.told("/title")),
             page::warnings(run),
+            bars::bars(run),
             snapshot::snapshots(run)?,
             escape(&run.scenario)
         );

@@ -2,6 +2,7 @@
 
 use super::closing;
 use crate::args;
+use crate::error_bars;
 use crate::failure::Failure;
 use crate::run::progress::Progress;
 use crate::run::{folder, start, words};
@@ -13,10 +14,13 @@ use serde_json::json;
 /// # Errors
 /// See [`Failure`].
 pub fn run(arguments: &args::Run) -> Result<u8, Failure> {
+    if let Some(names) = &arguments.error_bars {
+        return error_bars::run::run(arguments, &overrides(arguments), names);
+    }
     let folder = arguments.out.clone().unwrap_or_else(|| folder::default_folder(&arguments.scenario));
     folder::check_free(&folder, &arguments.scenario, arguments.force)?;
     let threads = start::use_threads(arguments.manner.threads)?;
-    let setup = scenario::load(&arguments.scenario, &arguments.set)?;
+    let setup = scenario::load(&arguments.scenario, &overrides(arguments))?;
     let progress = Progress::new(&arguments.manner);
     let driver = start::start(setup, &folder, arguments.force, threads, progress)?;
     let until = driver.plan.stop.time * driver.plan.scales.time;
@@ -33,4 +37,14 @@ pub fn run(arguments: &args::Run) -> Result<u8, Failure> {
     );
     let finish = driver.run()?;
     closing::close(&folder, &finish)
+}
+
+/// What is laid over the scenario.
+fn overrides(arguments: &args::Run) -> Vec<String> {
+    let mut overrides = arguments.set.clone();
+    if let Some(origin) = &arguments.start_from {
+        let origin = std::path::absolute(origin).unwrap_or_else(|_| origin.clone());
+        overrides.push(format!("start_from={}", toml::Value::String(origin.to_string_lossy().into_owned())));
+    }
+    overrides
 }

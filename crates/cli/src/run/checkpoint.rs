@@ -26,7 +26,7 @@ pub const UNFINISHED_FILE: &str = "checkpoint.unfinished";
 
 const MAGIC: [u8; 8] = *b"PELLICKP";
 /// Counts up with every change of what a checkpoint holds.
-const FORMAT: u32 = 1;
+const FORMAT: u32 = 2;
 const HEADER: usize = 8 + 4 + 4 + 4 + 32;
 /// Most bytes, packed or unpacked: enough for 400,000 vertices (about 230 bytes each). Whatever such a file says, reading
 /// it takes less than 1 GB: small numbers grow to at most four times their size in memory, lists by doubling.

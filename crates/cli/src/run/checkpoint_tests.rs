@@ -42,6 +42,7 @@ fn sample() -> &'static Checkpoint {
             seed: 1,
             scenario_sha256: String::new(),
             warnings: String::new(),
+            origin: None,
         };
         Checkpoint::of(&plan, &simulation, &Cursor::default(), &Accounts::default())
     })

@@ -1,6 +1,6 @@
 //! What does not change during a run.
 
-use crate::setup::{Cadence, Scales, Setup, StopRules};
+use crate::setup::{Cadence, Origin, Scales, Setup, StopRules};
 use pellicle_physics::Parameters;
 use serde::{Deserialize, Serialize};
 
@@ -23,6 +23,8 @@ pub struct Plan {
     pub scenario_sha256: String,
     /// What the user was told before the run, one per line.
     pub warnings: String,
+    /// The run whose end state this one started from.
+    pub origin: Option<Origin>,
 }
 
 impl Plan {
@@ -37,6 +39,7 @@ impl Plan {
             seed: setup.seed,
             scenario_sha256,
             warnings: setup.warnings.join("\n"),
+            origin: setup.origin.clone(),
         }
     }
 

@@ -52,7 +52,8 @@ pub fn start(
         return Err(Failure::Input(format!("the scenario cannot be run: {fault}")));
     }
     let warnings = setup.warnings;
-    let simulation = Simulation::new(setup.parameters, setup.state)
+    let begin = if setup.origin.is_some() { Simulation::begin_from } else { Simulation::new };
+    let simulation = begin(setup.parameters, setup.state)
         .map_err(|error| Failure::Input(format!("the scenario cannot be run: {error}")))?;
     let interrupt = Interrupt::watch().map_err(|error| Failure::Files(format!("cannot watch signals: {error}")))?;
     fs::create_dir_all(folder).map_err(|error| Failure::system("create the directory", folder, &error))?;

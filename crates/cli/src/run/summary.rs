@@ -134,9 +134,11 @@ fn summary(plan: &Plan, now: &Checkpoint, row: &Row, outcome: &Outcome) -> Value
             "version": env!("CARGO_PKG_VERSION"),
             "scenario_sha256": plan.scenario_sha256,
             "state_sha256": now.fingerprint(),
+            "started_from": plan.origin,
             "seed": plan.seed,
             "threads": now.accounts.threads,
             "resumed": now.accounts.resumed,
+            "warnings_of_resuming": outcome.warnings,
             "machine": {
                 "system": std::env::consts::OS,
                 "architecture": std::env::consts::ARCH,

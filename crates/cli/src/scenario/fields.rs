@@ -39,8 +39,9 @@ pub fn build(
         BindingRegion::Marked => {
             let radius = values.number("protein.spot.radius").unwrap_or(0.0) / surface.size;
             let centre = locate(values, "protein.spot.", "protein.spot.", radius, surface)?;
-            // A rim as narrow as the mesh can carry.
-            let width = surface.mesh.mean_edge_length();
+            // Where nothing is said, a rim as narrow as the mesh can carry.
+            let wanted = values.number("protein.spot.rim_width").map(|width| width / surface.size);
+            let width = wanted.unwrap_or_else(|| surface.mesh.mean_edge_length());
             let spot = disc(&surface.mesh, centre, radius, width);
             fields.marker.clone_from(&spot);
             spot

@@ -68,6 +68,8 @@ pub enum Kind {
     Section(&'static [Key]),
     /// A list of tables.
     Sections(&'static [Key]),
+    /// Anything; who asks for it looks at it.
+    Loose,
 }
 
 /// One key.
@@ -85,7 +87,8 @@ pub struct Key {
     pub about: &'static str,
 }
 
-const fn key(name: &'static str, kind: Kind, example: &'static str, about: &'static str) -> Key {
+/// A key without default.
+pub const fn key(name: &'static str, kind: Kind, example: &'static str, about: &'static str) -> Key {
     Key {
         name,
         kind,
@@ -96,13 +99,15 @@ const fn key(name: &'static str, kind: Kind, example: &'static str, about: &'sta
 }
 
 impl Key {
-    const fn or(mut self, default: &'static str) -> Self {
+    /// With a default, as TOML.
+    pub const fn or(mut self, default: &'static str) -> Self {
         self.default = Some(default);
         self
     }
 }
 
-const fn section(name: &'static str, keys: &'static [Key], about: &'static str) -> Key {
+/// A table.
+pub const fn section(name: &'static str, keys: &'static [Key], about: &'static str) -> Key {
     key(name, Kind::Section(keys), "", about)
 }
 
@@ -130,6 +135,7 @@ pub const ROOT: &[Key] = &[
     key("temperature", Quantity(m::TEMPERATURE, Positive), "\"298 K\"", "temperature; sets kBT").or("\"298 K\""),
     key("seed", Whole(0, i64::MAX), "1", "seed of all randomness: bumps, irregular meshes, noise").or("1"),
     key("include", Path, "\"base.toml\"", "another scenario whose keys are used where this one is silent"),
+    key("start_from", Path, "\"other-run\"", "directory of a run whose end state this one starts from; [surface] then only sets scales and edge lengths"),
     section("surface", SURFACE, "shape of the membrane at the start and its mesh"),
     section("membrane", MEMBRANE, "material of the membrane; where composition is given, of the phase with composition 0"),
     section("lipids", LIPIDS, "how the amount of lipid is set"),
@@ -236,6 +242,7 @@ const SPOT: &[Key] = &[
     key("centre", Vector(m::LENGTH), ANY_POINT, "point on the membrane"),
     key("direction", Direction, "[0, 0, 1]", "direction from the middle of the surface, instead of a point"),
     key("radius", Quantity(m::LENGTH, Positive), "\"1 um\"", "radius of the spot"),
+    key("rim_width", Quantity(m::LENGTH, Positive), "\"0.1 um\"", "half width of its rim, which follows tanh(distance/width); left out: the mean edge length"),
 ];
 
 const SURROUNDINGS: &[Key] = &[
@@ -294,7 +301,12 @@ const STOP: &[Key] = &[
 
 /// The key at a dotted path; items of lists are left out (`load.path.time`).
 pub fn find(path: &str) -> Option<&'static Key> {
-    let mut keys = ROOT;
+    find_in(ROOT, path)
+}
+
+/// As [`find`], in another list of keys.
+pub fn find_in(root: &'static [Key], path: &str) -> Option<&'static Key> {
+    let mut keys = root;
     let mut found = None;
     for part in path.split('.') {
         let key = keys.iter().find(|key| key.name == part)?;

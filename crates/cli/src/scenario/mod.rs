@@ -7,24 +7,25 @@
 
 mod checks;
 mod fields;
-mod keys;
+pub mod keys;
 mod physics;
-mod problem;
-mod read;
+pub mod problem;
+pub mod read;
 mod schema;
-mod source;
+pub mod source;
+mod start_state;
 mod surface;
 #[cfg(test)]
 mod tests;
-mod values;
+pub mod values;
 
 pub use problem::ScenarioError;
-pub use schema::schema;
+pub use schema::{schema, schema_of};
 
 use crate::setup::{Cadence, Setup, StopRules};
 use crate::units::measure as m;
 use keys::{Key, Kind, ROOT};
-use pellicle_physics::State;
+use pellicle_physics::{Parameters, State};
 use problem::{Place, Problem};
 use read::Reader;
 use source::{Data, Gather, Node};
@@ -84,14 +85,43 @@ fn finish(
     if !problems.is_empty() || !gather.problems.is_empty() {
         return Err(error(gather, problems));
     }
-    surface::resolve_path(&mut values, &gather.folders);
+    for path in ["surface.file", "start_from"] {
+        surface::resolve_path(&mut values, path, &gather.folders);
+    }
     match ready(values, thermal_energy, title) {
         Ok(setup) => Ok(setup),
         Err(problem) => Err(error(gather, vec![problem])),
     }
 }
 
-fn error(mut gather: Gather, problems: Vec<Problem>) -> ScenarioError {
+/// What decides the course of a run with overrides, as [`Values::content`] writes it, without making its mesh; and
+/// kBT [J].
+///
+/// # Errors
+/// [`ScenarioError`] for values that cannot be read; whether they fit each other shows when the run starts.
+pub fn content(
+    base: &Gather,
+    tree: &Node,
+    overrides: &[String],
+    hash: &dyn Fn(&str) -> String,
+) -> Result<(String, f64), ScenarioError> {
+    let (tree, gather) = base.laid_over(tree, overrides);
+    let mut reader = Reader::new(&gather.sources);
+    let (mut values, thermal_energy) = reader.scenario(&tree);
+    let problems = reader.problems;
+    if !problems.is_empty() || !gather.problems.is_empty() {
+        return Err(error(gather, problems));
+    }
+    for path in ["surface.file", "start_from"] {
+        surface::resolve_path(&mut values, path, &gather.folders);
+    }
+    fill_from_list(&mut values, ROOT, "");
+    physics::fill_plain(&mut values);
+    Ok((values.content(hash), thermal_energy))
+}
+
+/// The faults found while texts were gathered, and others, in the order of the text.
+pub fn error(mut gather: Gather, problems: Vec<Problem>) -> ScenarioError {
     gather.problems.extend(problems);
     // In the order of the text.
     gather.problems.sort_by_key(|problem| {
@@ -138,29 +168,20 @@ fn ready(mut values: Values, thermal_energy: f64, title: &str) -> Result<Setup, 
     physics::proportion(&values, &scales)?;
     physics::fill_scaled(&mut values, &scales, surface.mesh.n_vertices());
     let mut warnings = surface.warnings.clone();
-    let parameters = physics::parameters(&values, scales, &surface, &mut warnings)?;
-    let fields = fields::build(&values, &parameters, &surface)?;
-    let state = State::at_rest(
-        &parameters,
-        surface.mesh,
-        &fields.composition,
-        &fields.coverage,
-        &fields.marker,
-    )
-    .map_err(|error| {
-        Problem::new(
-            Some(Place::default()),
-            format!("the start state cannot be made: {error}"),
-            "",
-            "check [surface] and the start values of [composition] and [protein]",
-        )
-    })?;
+    let source = start_state::find(&values, &scales, &mut warnings)?;
+    let mesh = source.as_ref().map_or(&surface.mesh, |source| &source.state.mesh);
+    let parameters = physics::parameters(&values, scales, &surface, mesh, &mut warnings)?;
+    let (state, origin) = match source {
+        Some(source) => (source.state_for(&values, &parameters, &surface.mesh)?, Some(source.origin)),
+        None => (fresh_state(&values, &parameters, surface)?, None),
+    };
     let in_units = |path: &str, measure| values.number(path).map(|x| x / scales.of(&measure));
     Ok(Setup {
         title: values.text("title").to_string(),
         scales,
         parameters,
         state,
+        origin,
         stop: StopRules {
             time: in_units("time.end", m::TIME).unwrap_or(0.0),
             neck_radius: in_units("stop.neck_radius", m::LENGTH),
@@ -176,6 +197,19 @@ fn ready(mut values: Values, thermal_energy: f64, title: &str) -> Result<Setup, 
         seed: values.whole("seed").unwrap_or(0) as u64,
         resolved: values.to_toml(),
         warnings,
+    })
+}
+
+/// The shape and the fields that the scenario describes.
+fn fresh_state(values: &Values, parameters: &Parameters, surface: surface::Surface) -> Result<State, Problem> {
+    let fields = fields::build(values, parameters, &surface)?;
+    State::at_rest(parameters, surface.mesh, &fields.composition, &fields.coverage, &fields.marker).map_err(|error| {
+        Problem::new(
+            Some(Place::default()),
+            format!("the start state cannot be made: {error}"),
+            "",
+            "check [surface] and the start values of [composition] and [protein]",
+        )
     })
 }
 

@@ -10,7 +10,7 @@ use pellicle_physics::parameters::{
     AreaCondition, BindingRegion, Blend, Load, MeshCare, Parameters, Phases, Protein, Pull, Rim,
     StepControl, VolumeCondition,
 };
-use pellicle_surface::Vec3;
+use pellicle_surface::{Mesh, Vec3};
 use pellicle_surface::geometry::Geometry;
 use std::f64::consts::PI;
 use toml::Value as Toml;
@@ -206,15 +206,16 @@ fn vector(item: &Values, path: &str, unit: f64) -> Vec3 {
     Vec3::from(item.vector(path).unwrap_or_default()) / unit
 }
 
-/// Parameters in solver units.
+/// Parameters in solver units. `start`: the mesh that the run starts from, mostly that of `surface`.
 pub fn parameters(
     values: &Values,
     scales: Scales,
     surface: &Surface,
+    start: &Mesh,
     warnings: &mut Vec<String>,
 ) -> Result<Parameters, Problem> {
     let s = Scaled { values, scales };
-    let geometry = Geometry::new(&surface.mesh);
+    let geometry = Geometry::new(start);
     let framed = is_framed(values);
     let parameters = Parameters {
         bending_rigidity: s.blend("bending_rigidity", m::ENERGY, Some("protein.stiffening")),

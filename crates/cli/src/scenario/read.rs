@@ -16,17 +16,34 @@ pub struct Reader<'a> {
     pub sources: &'a [Source],
     /// Faults found.
     pub problems: Vec<Problem>,
-    thermal_energy: Option<f64>,
+    /// kBT [J], once it is known.
+    pub thermal_energy: Option<f64>,
+    root: &'static [Key],
 }
 
 impl<'a> Reader<'a> {
-    /// A reader of the given texts.
+    /// A reader of scenarios in the given texts.
     pub fn new(sources: &'a [Source]) -> Self {
+        Self::of(ROOT, sources)
+    }
+
+    /// A reader of what a list of keys describes.
+    pub fn of(root: &'static [Key], sources: &'a [Source]) -> Self {
         Self {
             sources,
             problems: Vec::new(),
             thermal_energy: None,
+            root,
         }
+    }
+
+    /// Read a whole text with the reader's keys.
+    pub fn whole(&mut self, tree: &Node) -> Values {
+        let mut values = Values::of(self.root);
+        if let Data::Table(table) = &tree.data {
+            self.table(table, self.root, "", "", &mut values);
+        }
+        values
     }
 
     /// Read the whole scenario; returns the values and kBT [J].
@@ -169,21 +186,22 @@ impl<'a> Reader<'a> {
                 .map(|(place, _)| place)
                 .min_by_key(|place| place.span.start)
                 .unwrap_or(&item.place);
-            let mut one = Values::item(values.full(path), place.clone());
+            let mut one = values.item(path, place.clone());
             self.table(table, inner, "", &format!("{shown}[{index}]."), &mut one);
             list.push(one);
         }
         list
     }
 
-    fn unknown(&mut self, name: &str, place: &Place, keys: &[Key], shown: &str) {
+    /// Complain about a key that `keys` does not have.
+    pub fn unknown(&mut self, name: &str, place: &Place, keys: &[Key], shown: &str) {
         let name_shown: String = name.chars().take(60).collect();
         let near = keys
             .iter()
             .map(|key| (strsim::damerau_levenshtein(&name_shown, key.name), key.name))
             .min()
             .filter(|(distance, near)| *distance <= 1 + near.len() / 3);
-        let elsewhere = ROOT.iter().find(|section| match section.kind {
+        let elsewhere = self.root.iter().find(|section| match section.kind {
             Kind::Section(inner) => inner.iter().any(|key| key.name == name),
             _ => false,
         });
@@ -204,7 +222,7 @@ impl<'a> Reader<'a> {
     }
 
     /// A value, or a problem.
-    fn value(&mut self, key: &Key, shown: &str, node: &Node) -> Option<Value> {
+    pub fn value(&mut self, key: &Key, shown: &str, node: &Node) -> Option<Value> {
         let read = match (key.kind, &node.data) {
             (Kind::Quantity(measure, range), Data::Text(text)) => {
                 return self
@@ -263,6 +281,7 @@ impl<'a> Reader<'a> {
                 Err(format!("must be a whole number between {low} and {high}"))
             }
             (Kind::Flag, Data::Boolean(yes)) => Ok(Value::Flag(*yes)),
+            (Kind::Loose, _) => Ok(Value::Node(node.clone())),
             (Kind::Choice(words), Data::Text(text)) => {
                 if words.contains(&text.as_str()) {
                     Ok(Value::Text(text.clone()))
@@ -414,7 +433,7 @@ impl<'a> Reader<'a> {
     }
 
     /// Place of some bytes of a text, where it is written without escapes; else of the whole value.
-    fn within(&self, place: &Place, text: &str, span: &std::ops::Range<usize>) -> Place {
+    pub fn within(&self, place: &Place, text: &str, span: &std::ops::Range<usize>) -> Place {
         let written = self
             .sources
             .get(place.source)
@@ -429,7 +448,8 @@ impl<'a> Reader<'a> {
     }
 }
 
-fn number(node: &Node) -> Option<f64> {
+/// A plain number.
+pub fn number(node: &Node) -> Option<f64> {
     match node.data {
         Data::Integer(i) => Some(i as f64),
         Data::Float(x) => Some(x),
@@ -460,11 +480,12 @@ fn wanted(kind: &Kind) -> String {
         Kind::LengthUnit => "a unit of length".into(),
         Kind::Section(_) => "a table".into(),
         Kind::Sections(_) => "a list of tables".into(),
+        Kind::Loose => "a value".into(),
     }
 }
 
 /// The value as it is written back.
-fn to_toml(node: &Node) -> Toml {
+pub fn to_toml(node: &Node) -> Toml {
     match &node.data {
         Data::Text(text) | Data::TooLarge(text) => Toml::String(text.clone()),
         Data::Integer(i) => Toml::Integer(*i),

@@ -8,13 +8,18 @@ const QUANTITY: &str = r"^\s*[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][+-]?[0-9]+)?\s
 
 /// JSON Schema (draft 2020-12) of a scenario, for editors.
 pub fn schema() -> String {
-    let mut root = table(ROOT);
+    schema_of(ROOT, "Scenario of pellicle")
+}
+
+/// JSON Schema of what another list of keys describes.
+pub fn schema_of(root: &[Key], title: &str) -> String {
+    let mut root = table(root);
     if let Value::Object(map) = &mut root {
         map.insert(
             "$schema".into(),
             json!("https://json-schema.org/draft/2020-12/schema"),
         );
-        map.insert("title".into(), json!("Scenario of pellicle"));
+        map.insert("title".into(), json!(title));
     }
     format!("{root:#}")
 }
@@ -56,6 +61,7 @@ fn property(key: &Key) -> Value {
         Kind::Text | Kind::Path | Kind::LengthUnit => json!({ "type": "string", "minLength": 1 }),
         Kind::Section(keys) => table(keys),
         Kind::Sections(keys) => json!({ "type": "array", "items": table(keys) }),
+        Kind::Loose => json!({}),
     };
     if let Value::Object(map) = &mut schema {
         map.insert("description".into(), json!(about));

@@ -159,6 +159,13 @@ impl Gather {
         Some(merge(base, tree))
     }
 
+    /// As [`Gather::set`], for a copy of the tree that stands for itself: nothing is remembered but faults.
+    pub fn laid_over(&self, tree: &Node, overrides: &[String]) -> (Node, Gather) {
+        let mut gather = Gather { sources: self.sources.clone(), folders: self.folders.clone(), problems: Vec::new() };
+        let tree = overrides.iter().fold(tree.clone(), |tree, option| gather.set(tree, option));
+        (tree, gather)
+    }
+
     /// Lay an override `key.path=value` over a tree.
     pub fn set(&mut self, tree: Node, option: &str) -> Node {
         let source = self.sources.len();

@@ -380,9 +380,9 @@ pub fn locate(
     ))
 }
 
-/// Give `surface.file` its full path, so that the scenario can be read from another folder.
-pub fn resolve_path(values: &mut Values, folders: &[std::path::PathBuf]) {
-    let Some(entry) = values.entry("surface.file") else {
+/// Give the path of a file its full form, so that the scenario can be read from another folder.
+pub fn resolve_path(values: &mut Values, key: &str, folders: &[std::path::PathBuf]) {
+    let Some(entry) = values.entry(key) else {
         return;
     };
     let folder = entry
@@ -391,14 +391,14 @@ pub fn resolve_path(values: &mut Values, folders: &[std::path::PathBuf]) {
         .and_then(|place| folders.get(place.source))
         .cloned()
         .unwrap_or_default();
-    let path = folder.join(values.text("surface.file"));
+    let path = folder.join(values.text(key));
     let full = std::fs::canonicalize(&path)
         .or_else(|_| std::path::absolute(&path))
         .unwrap_or(path);
     // A path that is no UTF-8 cannot be written down; the relative one stays.
     if let Some(text) = full.to_str() {
         values.rewrite(
-            "surface.file",
+            key,
             Value::Text(text.into()),
             toml::Value::String(text.into()),
         );

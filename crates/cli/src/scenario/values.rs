@@ -2,6 +2,7 @@
 
 use super::keys::{self, Key, Kind, ROOT};
 use super::problem::Place;
+use super::source::Node;
 use crate::units::Measure;
 use std::collections::{BTreeMap, BTreeSet};
 use toml::Value as Toml;
@@ -21,6 +22,8 @@ pub enum Value {
     Vector([f64; 3]),
     /// A list of tables.
     List(Vec<Values>),
+    /// As it stands in the text.
+    Node(Node),
 }
 
 /// A value, where it stands and how it is written.
@@ -37,8 +40,10 @@ pub struct Entry {
 }
 
 /// Values by dotted path.
-#[derive(Clone, Debug, Default)]
+#[derive(Clone, Debug)]
 pub struct Values {
+    /// The list of keys that paths refer to.
+    pub root: &'static [Key],
     /// Dotted path of this table in the list of keys, empty for the whole scenario.
     pub path: String,
     /// Where the table stands.
@@ -50,13 +55,66 @@ pub struct Values {
     pub failed: BTreeSet<String>,
 }
 
+impl Default for Values {
+    fn default() -> Self {
+        Self::of(ROOT)
+    }
+}
+
 impl Values {
-    /// An empty table in a list.
-    pub fn item(path: String, place: Place) -> Self {
+    /// An empty table with the keys of a list.
+    pub fn of(root: &'static [Key]) -> Self {
         Self {
-            path,
+            root,
+            path: String::new(),
+            place: None,
+            entries: BTreeMap::new(),
+            sections: BTreeMap::new(),
+            failed: BTreeSet::new(),
+        }
+    }
+
+    /// An empty table in a list within this one.
+    pub fn item(&self, path: &str, place: Place) -> Self {
+        Self {
+            path: self.full(path),
             place: Some(place),
-            ..Self::default()
+            ..Self::of(self.root)
+        }
+    }
+
+    /// All that decides the course of a run, one line per value, in an order of its own and in SI: equal for equal
+    /// scenarios, however they are written. Numbers count with twelve digits; files with what `hash` makes of them.
+    pub fn content(&self, hash: &dyn Fn(&str) -> String) -> String {
+        let mut text = String::new();
+        self.write_content("", hash, &mut text);
+        text
+    }
+
+    fn write_content(&self, header: &str, hash: &dyn Fn(&str) -> String, text: &mut String) {
+        for (path, entry) in &self.entries {
+            let name = format!("{header}{path}");
+            if matches!(name.as_str(), "title" | "output.checkpoint_every") {
+                continue;
+            }
+            let value = match &entry.value {
+                Value::Number(x) => format!("{x:.11e}"),
+                Value::Whole(i) => i.to_string(),
+                Value::Flag(yes) => yes.to_string(),
+                Value::Text(word) => match keys::find(&self.full(path)).map(|key| key.kind) {
+                    Some(Kind::Path) => hash(word),
+                    _ => format!("{word:?}"),
+                },
+                Value::Vector([x, y, z]) => format!("{x:.11e} {y:.11e} {z:.11e}"),
+                Value::List(items) => {
+                    for (index, item) in items.iter().enumerate() {
+                        item.write_content(&format!("{name}.{index}."), hash, text);
+                    }
+                    format!("{} items", items.len())
+                }
+                Value::Node(_) => continue,
+            };
+            text.push_str(&format!("{name} = {value}\n"));
         }
     }
 
@@ -76,7 +134,7 @@ impl Values {
 
     /// The entry of a key, if given or filled in.
     pub fn entry(&self, path: &str) -> Option<&Entry> {
-        debug_assert!(keys::find(&self.full(path)).is_some(), "no key {path}");
+        debug_assert!(keys::find_in(self.root, &self.full(path)).is_some(), "no key {path}");
         self.entries.get(path)
     }
 
@@ -115,7 +173,7 @@ impl Values {
 
     /// Whether a section is given.
     pub fn has_section(&self, path: &str) -> bool {
-        debug_assert!(keys::find(&self.full(path)).is_some(), "no section {path}");
+        debug_assert!(keys::find_in(self.root, &self.full(path)).is_some(), "no section {path}");
         self.sections.contains_key(path)
     }
 
@@ -162,6 +220,14 @@ impl Values {
         match self.entry(path).map(|entry| &entry.value) {
             Some(Value::List(list)) => list,
             _ => &[],
+        }
+    }
+
+    /// A value as it stands in the text.
+    pub fn node(&self, path: &str) -> Option<&Node> {
+        match &self.entry(path)?.value {
+            Value::Node(node) => Some(node),
+            _ => None,
         }
     }
 

@@ -2,6 +2,7 @@
 
 use super::advance::Simulation;
 use super::connectivity::Connectivity;
+use crate::state::Ledger;
 use crate::{Parameters, PhysicsError, State};
 use pellicle_surface::Vec3;
 use serde::{Deserialize, Serialize};
@@ -21,6 +22,19 @@ pub struct Memory {
 }
 
 impl Simulation {
+    /// Begin a simulation from a state that another one left: mesh and lipids stay as they are, the ledger starts anew
+    /// with the free energy that `parameters` give the state.
+    ///
+    /// # Errors
+    /// Those of [`Simulation::new`].
+    pub fn begin_from(parameters: Parameters, mut state: State) -> Result<Self, PhysicsError> {
+        // Steps behind it mark a state as one that has settled; a new one would have its mesh and lipids adapted.
+        state.ledger = Ledger { accepted: 1, ..Ledger::default() };
+        let mut simulation = Self::new(parameters, state)?;
+        simulation.state.ledger = Ledger { start_energy: simulation.energies.total(), ..Ledger::default() };
+        Ok(simulation)
+    }
+
     /// What has to be kept beside [`Simulation::state`] to go on later with [`Simulation::restore`].
     pub fn memory(&self) -> Memory {
         Memory {

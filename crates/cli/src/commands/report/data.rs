@@ -16,6 +16,8 @@ pub struct Run {
     pub columns: HashMap<String, Vec<Option<f64>>>,
     /// `summary.json`; `Null` while a run goes on or after a crash.
     pub summary: Value,
+    /// `error_bars.json`; `Null` for a run without.
+    pub error_bars: Value,
     /// `scenario.toml`.
     pub scenario: String,
     /// Frames: time [s] and file.
@@ -48,6 +50,7 @@ pub fn read(folder: &Path) -> Result<Run, Failure> {
         name,
         columns: columns(&table)?,
         summary: serde_json::from_str(&optional("summary.json")).unwrap_or(Value::Null),
+        error_bars: serde_json::from_str(&optional("error_bars.json")).unwrap_or(Value::Null),
         scenario: optional("scenario.toml"),
         frames,
     })
