@@ -217,7 +217,7 @@ fn failed_runs_are_listed_with_their_reason() -> Fallible {
     let failure = head.iter().position(|column| column == "failure").ok_or("a column")?;
     let failed: Vec<&String> = cells.iter().map(|row| &row[failure]).filter(|reason| !reason.is_empty()).collect();
     assert_eq!(failed.len(), 2);
-    assert!(failed.iter().all(|reason| reason.contains("edge_length")), "{failed:?}");
+    assert!(failed.iter().all(|reason| reason.contains("edge length")), "{failed:?}");
     // No place on this machine, so that tables are the same everywhere.
     assert!(failed.iter().all(|reason| !reason.contains('/')), "{failed:?}");
     Ok(())
