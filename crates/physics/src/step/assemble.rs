@@ -90,6 +90,8 @@ pub struct MatrixInput<'a> {
     pub pattern: &'a BlockPattern,
     /// Rows J of the bending residuals over the stencils.
     pub bending_rows: &'a [Vec3],
+    /// κ at vertices.
+    pub bending_rigidity: &'a [f64],
     /// Positive stress of each triangle.
     pub stress: &'a [PositiveStress],
     /// Shear viscosity at vertices.
@@ -123,7 +125,7 @@ pub fn assemble(input: &MatrixInput, values: &mut [f64]) {
     let mut first = 0;
     while first < n {
         let end = (first + CHUNK).min(n);
-        let length = input.pattern.pattern.col_ptr[4 * end] - input.pattern.pattern.col_ptr[4 * first];
+        let length = input.pattern.piece_start[end] - input.pattern.piece_start[first];
         let (piece, tail) = rest.split_at_mut(length);
         pieces.push((first, piece));
         rest = tail;

@@ -1,6 +1,8 @@
 //! What belongs to one connectivity: analysed once, used in every step until the mesh changes.
 
+use super::linear::LinearSolver;
 use super::pattern::BlockPattern;
+use super::preconditioner::Preconditioner;
 use crate::PhysicsError;
 use crate::state::State;
 use pellicle_sparse::{Analysis, Factor};
@@ -16,10 +18,8 @@ pub struct Connectivity {
     pub stencils: Stencils,
     /// Scatter indices.
     pub pattern: BlockPattern,
-    /// Symbolic factorisation.
-    pub analysis: Arc<Analysis>,
-    /// Numeric factorisation, storage reused.
-    pub factor: Factor,
+    /// Solver of the linear systems.
+    pub solver: LinearSolver,
     /// Values of the matrix, storage reused.
     pub values: Vec<f64>,
     /// Positions of the vertices that the order of elimination was chosen by.
@@ -44,15 +44,14 @@ impl Connectivity {
         let stencils = Stencils::new(&topology);
         let pattern = BlockPattern::new(&topology, &stencils);
         let coordinates: Vec<[f64; 3]> = ordered_at.iter().map(|p| [p.x, p.y, p.z]).collect();
-        let analysis = Arc::new(Analysis::new(pattern.pattern.clone(), 4, &coordinates)?);
-        let factor = Factor::new(&analysis);
-        let values = vec![0.0; pattern.pattern.row_idx.len()];
+        let analysis = Arc::new(Analysis::new(pattern.pattern(), 4, &coordinates)?);
+        let solver = LinearSolver::new(Preconditioner::Direct(Box::new(Factor::new(&analysis))));
+        let values = vec![0.0; pattern.entries()];
         Ok(Self {
             topology,
             stencils,
             pattern,
-            analysis,
-            factor,
+            solver,
             values,
             ordered_at,
         })

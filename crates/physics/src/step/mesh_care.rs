@@ -272,6 +272,7 @@ impl Simulation {
             return Ok(false);
         }
         self.connectivity = Connectivity::new(&state)?;
+        self.timings.analyses += 1;
         self.state = state;
         self.wanted_edge = proposal.target_edge;
         self.forget_connectivity();
