@@ -67,6 +67,7 @@ fn stiffness(n: usize, degrees: &[usize]) -> Result<Vec<f64>, Box<dyn std::error
     let Connectivity { pattern, values, solver, .. } = &mut connectivity;
     let input = MatrixInput {
         topology: &still.topology,
+        positions: &still.mesh.positions,
         geometry: &still.geometry,
         pattern,
         bending_rows: &rows,
@@ -81,7 +82,8 @@ fn stiffness(n: usize, degrees: &[usize]) -> Result<Vec<f64>, Box<dyn std::error
         freedom: &freedom,
     };
     assemble(&input, values);
-    solver.factorise(&LinearSystem { values, borders: &[], input: &input })?;
+    let system = LinearSystem { values, borders: &[], input: &input };
+    solver.factorise(&system)?;
     let rigid: Vec<Vec<f64>> = [(0, 0), (1, -1), (1, 0), (1, 1)]
         .iter()
         .map(|(l, m)| {
@@ -117,7 +119,7 @@ fn stiffness(n: usize, degrees: &[usize]) -> Result<Vec<f64>, Box<dyn std::error
                 for i in 0..n {
                     y[4 * i] = r[i];
                 }
-                solver.apply_inverse(&mut y);
+                solver.apply_inverse(&system, &mut y);
                 let mut u: Vec<f64> = (0..n).map(|i| y[4 * i]).collect();
                 project_motion(&mut u);
                 u

@@ -29,6 +29,7 @@ pub fn flow(bare: &Bare, load: &[Vec3], resistance: f64) -> Result<(Vec<Vec3>, V
     let Connectivity { pattern, values, solver, .. } = &mut connectivity;
     let input = MatrixInput {
         topology: &bare.topology,
+        positions: &bare.mesh.positions,
         geometry: &bare.geometry,
         pattern,
         bending_rows: &bare.bending_rows_and_gradient(2.0).0,

@@ -40,7 +40,7 @@ impl Freedom {
     }
 
     #[inline]
-    fn reduce_rows(&self, m: Matrix3<f64>) -> Matrix3<f64> {
+    pub(super) fn reduce_rows(&self, m: Matrix3<f64>) -> Matrix3<f64> {
         match self {
             Freedom::Free => m,
             Freedom::Along(direction) => {
@@ -54,7 +54,7 @@ impl Freedom {
     }
 
     #[inline]
-    fn reduce_columns(&self, m: Matrix3<f64>) -> Matrix3<f64> {
+    pub(super) fn reduce_columns(&self, m: Matrix3<f64>) -> Matrix3<f64> {
         match self {
             Freedom::Free => m,
             Freedom::Along(direction) => {
@@ -84,6 +84,8 @@ pub struct PositiveStress {
 pub struct MatrixInput<'a> {
     /// Connectivity.
     pub topology: &'a Topology,
+    /// Positions of the vertices.
+    pub positions: &'a [Vec3],
     /// Geometry at the start of the step.
     pub geometry: &'a Geometry,
     /// Scatter indices.

@@ -2,13 +2,11 @@
 
 use super::linear::LinearSolver;
 use super::pattern::BlockPattern;
-use super::preconditioner::Preconditioner;
+use super::preconditioner::{Preconditioner, Way};
 use crate::PhysicsError;
 use crate::state::State;
-use pellicle_sparse::{Analysis, Factor};
 use pellicle_surface::geometry::Stencils;
 use pellicle_surface::{Topology, Vec3};
-use std::sync::Arc;
 
 /// Everything that belongs to one connectivity.
 pub struct Connectivity {
@@ -40,12 +38,18 @@ impl Connectivity {
     /// # Errors
     /// A mesh that is not a manifold.
     pub fn ordered(state: &State, ordered_at: Vec<Vec3>) -> Result<Self, PhysicsError> {
+        Self::with_way(state, ordered_at, Way::for_vertices(state.mesh.n_vertices()))
+    }
+
+    /// Analyse the connectivity of a state for a given way of solving the linear systems.
+    ///
+    /// # Errors
+    /// A mesh that is not a manifold.
+    pub fn with_way(state: &State, ordered_at: Vec<Vec3>, way: Way) -> Result<Self, PhysicsError> {
         let topology = Topology::new(state.mesh.n_vertices(), &state.mesh.triangles)?;
         let stencils = Stencils::new(&topology);
         let pattern = BlockPattern::new(&topology, &stencils);
-        let coordinates: Vec<[f64; 3]> = ordered_at.iter().map(|p| [p.x, p.y, p.z]).collect();
-        let analysis = Arc::new(Analysis::new(pattern.pattern(), 4, &coordinates)?);
-        let solver = LinearSolver::new(Preconditioner::Direct(Box::new(Factor::new(&analysis))));
+        let solver = LinearSolver::new(Preconditioner::new(way, &topology, &pattern, &ordered_at)?);
         let values = vec![0.0; pattern.entries()];
         Ok(Self {
             topology,

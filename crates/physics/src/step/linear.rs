@@ -12,7 +12,7 @@
 use super::assemble::MatrixInput;
 use super::borders::Border;
 use super::mechanics::Timings;
-use super::preconditioner::Preconditioner;
+use super::preconditioner::{Preconditioner, Way};
 use crate::PhysicsError;
 use crate::state::State;
 use nalgebra::DMatrix;
@@ -177,9 +177,17 @@ impl LinearSolver {
         }
     }
 
-    /// The way the preconditioner is made.
-    pub fn preconditioner(&self) -> &Preconditioner {
-        &self.preconditioner
+    /// Give the memory back, before the solver is replaced.
+    pub(super) fn release(&mut self) {
+        self.origin = None;
+        self.preconditioner.release();
+        self.responses = Vec::new();
+        self.krylov = GmresWorkspace::new();
+    }
+
+    /// The way systems are solved.
+    pub fn way(&self) -> Way {
+        self.preconditioner.way()
     }
 
     /// What is needed to make the present factor again, if it will be used again.
@@ -207,7 +215,7 @@ impl LinearSolver {
         self.responses.resize_with(borders.len(), Vec::new);
         for (response, border) in self.responses.iter_mut().zip(borders) {
             response.clone_from(&border.column);
-            self.preconditioner.apply(response);
+            self.preconditioner.apply(system, response);
         }
         let k = borders.len();
         let complement = DMatrix::from_fn(k, k, |r, c| {
@@ -234,9 +242,9 @@ impl LinearSolver {
     ///
     /// # Shapes
     /// Four numbers per vertex, then one per border.
-    pub fn apply_inverse(&mut self, vector: &mut [f64]) {
+    pub fn apply_inverse(&mut self, system: &LinearSystem, vector: &mut [f64]) {
         let Self { preconditioner, responses, corner, corner_product, .. } = self;
-        apply_inverse(preconditioner, responses, corner, corner_product, vector);
+        apply_inverse(preconditioner, system, responses, corner, corner_product, vector);
     }
 
     /// Solve a system. `y` holds the right-hand side on entry and the solution on exit; `guess` a first guess.
@@ -263,9 +271,10 @@ impl LinearSolver {
         let mut outcome = None;
         if usable {
             // Beyond this a new factor would have been cheaper.
-            let most = 1.0 + self.preconditioner.cost() / ITERATION;
+            let most = self.preconditioner.most_iterations();
+            let most = most.unwrap_or(1 + (self.preconditioner.cost() / ITERATION) as usize);
             let clock = Instant::now();
-            outcome = Some(self.iterate(system, guess, y, most as usize));
+            outcome = Some(self.iterate(system, guess, y, most));
             timings.solves += clock.elapsed().as_secs_f64();
             iterations += outcome.map_or(0, |o| o.iterations);
         }
@@ -337,7 +346,7 @@ impl LinearSolver {
             &mut apply,
             |v: &mut [f64]| {
                 v.iter_mut().zip(scale).for_each(|(v, s)| *v /= s);
-                apply_inverse(preconditioner, responses, corner, corner_product, v);
+                apply_inverse(preconditioner, system, responses, corner, corner_product, v);
                 v.iter_mut().zip(scale).for_each(|(v, s)| *v /= s);
             },
             rhs,
@@ -354,9 +363,10 @@ impl LinearSolver {
     }
 }
 
-/// y = A⁻¹ r − R z with z = S⁻¹ (s − Rᵀ r), R the responses: the inverse of a symmetric bordered matrix.
+/// y = w − R z with w = A⁻¹ r and z = S⁻¹ (s − Cᵀ w), R the responses: the inverse of a bordered matrix.
 fn apply_inverse(
     preconditioner: &mut Preconditioner,
+    system: &LinearSystem,
     responses: &[Vec<f64>],
     corner: &DMatrix<f64>,
     z: &mut Vec<f64>,
@@ -364,10 +374,10 @@ fn apply_inverse(
 ) {
     let k = responses.len();
     let (mesh, scalars) = vector.split_at_mut(vector.len() - k);
-    for (s, response) in scalars.iter_mut().zip(responses) {
-        *s -= dot(response, mesh);
+    preconditioner.apply(system, mesh);
+    for (s, border) in scalars.iter_mut().zip(system.borders) {
+        *s -= dot(&border.column, mesh);
     }
-    preconditioner.apply(mesh);
     z.clear();
     z.extend((0..k).map(|r| (0..k).map(|c| corner[(r, c)] * scalars[c]).sum::<f64>()));
     for (z, response) in z.iter().zip(responses) {

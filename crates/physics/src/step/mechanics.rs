@@ -94,6 +94,7 @@ impl Parts {
     ) -> MatrixInput<'a> {
         MatrixInput {
             topology,
+            positions: &state.mesh.positions,
             geometry: &measured.geometry,
             pattern,
             bending_rows: &self.forces.rows,

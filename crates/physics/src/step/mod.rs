@@ -15,3 +15,5 @@ pub mod mesh_care;
 pub mod pattern;
 pub mod preconditioner;
 pub mod rezone;
+mod ring;
+pub mod split;

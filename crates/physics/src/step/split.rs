@@ -55,7 +55,6 @@ pub struct Split {
 
 #[derive(Default)]
 struct Work {
-    values: Vec<f64>,
     solution: Vec<f64>,
     residual: Vec<f64>,
     scalar: Vec<f64>,
@@ -92,6 +91,12 @@ impl Split {
     /// Numbers held by the two factors.
     pub fn factor_entries(&self) -> usize {
         self.normal.analysis().factor_entries() + self.tangential.analysis().factor_entries()
+    }
+
+    /// Give the memory of the factors back.
+    pub(super) fn release(&mut self) {
+        self.normal.release();
+        self.tangential.release();
     }
 
     /// Fill it.
@@ -194,7 +199,7 @@ impl Split {
     fn prepare_coarse(&mut self, input: &MatrixInput, values: &[f64]) {
         let n = input.topology.n_vertices;
         let radius = (input.geometry.total_area / (4.0 * std::f64::consts::PI)).sqrt();
-        let centre = input.mesh_centre();
+        let centre = input.positions.iter().sum::<Vec3>() / n as f64;
         self.monomials = input.positions.iter().map(|x| monomials(&((x - centre) / radius))).collect();
         for (row, freedom) in self.monomials.iter_mut().zip(input.freedom) {
             if *freedom != Freedom::Free {
