@@ -18,6 +18,7 @@ use evidence::record::Record;
 use evidence::{Fallible, LARGE, SEED, SMALL};
 use pellicle_physics::step::assemble::{Freedom, MatrixInput, PositiveStress, assemble};
 use pellicle_physics::step::connectivity::Connectivity;
+use pellicle_physics::step::linear::LinearSystem;
 use pellicle_physics::{Parameters, State};
 use pellicle_surface::Vec3;
 use pellicle_surface::mesh::shapes::irregular_sphere;
@@ -63,24 +64,26 @@ fn stiffness(n: usize, degrees: &[usize]) -> Result<Vec<f64>, Box<dyn std::error
     let none = PositiveStress { along: 0.0, across: 0.0, direction: Vec3::zeros() };
     // Tangential motion is pinned to the normal, so that the factor is that of the normal block.
     let freedom: Vec<Freedom> = places.iter().map(|x| Freedom::Along(*x)).collect();
-    assemble(
-        &MatrixInput {
-            topology: &still.topology,
-            geometry: &still.geometry,
-            pattern: &connectivity.pattern,
-            bending_rows: &rows,
-            stress: &vec![none; still.mesh.n_triangles()],
-            viscosity: &vec![1e-3; n],
-            friction: &area.iter().map(|a| 1e-2 * a).collect::<Vec<_>>(),
-            lipid: &vec![1e6; n],
-            area_compression_modulus: 1e-6,
-            step: 1.0,
-            deviatoric: true,
-            freedom: &freedom,
-        },
-        &mut connectivity.values,
-    );
-    connectivity.factor.factorise(&connectivity.values)?;
+    let Connectivity { pattern, values, solver, .. } = &mut connectivity;
+    let input = MatrixInput {
+        topology: &still.topology,
+        positions: &still.mesh.positions,
+        geometry: &still.geometry,
+        pattern,
+        bending_rows: &rows,
+        bending_rigidity: &vec![1.0; n],
+        stress: &vec![none; still.mesh.n_triangles()],
+        viscosity: &vec![1e-3; n],
+        friction: &area.iter().map(|a| 1e-2 * a).collect::<Vec<_>>(),
+        lipid: &vec![1e6; n],
+        area_compression_modulus: 1e-6,
+        step: 1.0,
+        deviatoric: true,
+        freedom: &freedom,
+    };
+    assemble(&input, values);
+    let system = LinearSystem { values, borders: &[], input: &input };
+    solver.factorise(&system)?;
     let rigid: Vec<Vec<f64>> = [(0, 0), (1, -1), (1, 0), (1, 1)]
         .iter()
         .map(|(l, m)| {
@@ -116,7 +119,7 @@ fn stiffness(n: usize, degrees: &[usize]) -> Result<Vec<f64>, Box<dyn std::error
                 for i in 0..n {
                     y[4 * i] = r[i];
                 }
-                connectivity.factor.solve_in_place(&mut y);
+                solver.apply_inverse(&system, &mut y);
                 let mut u: Vec<f64> = (0..n).map(|i| y[4 * i]).collect();
                 project_motion(&mut u);
                 u

@@ -5,6 +5,8 @@ use nalgebra::{Matrix6, Vector6};
 use pellicle_physics::parameters::{AreaCondition, VolumeCondition};
 use pellicle_physics::step::assemble::{Freedom, MatrixInput, PositiveStress, assemble};
 use pellicle_physics::step::connectivity::Connectivity;
+use pellicle_physics::step::linear::{LinearSystem, Origin};
+use pellicle_physics::step::mechanics::Timings;
 use pellicle_physics::{Parameters, PhysicsError, State};
 use pellicle_surface::Vec3;
 
@@ -24,31 +26,32 @@ pub fn flow(bare: &Bare, load: &[Vec3], resistance: f64) -> Result<(Vec<Vec3>, V
     let area = &bare.geometry.vertex_area;
     let none = PositiveStress { along: 0.0, across: 0.0, direction: Vec3::zeros() };
     let friction: Vec<f64> = area.iter().map(|a| a * resistance).collect();
-    assemble(
-        &MatrixInput {
-            topology: &bare.topology,
-            geometry: &bare.geometry,
-            pattern: &connectivity.pattern,
-            bending_rows: &bare.bending_rows_and_gradient(2.0).0,
-            stress: &vec![none; bare.mesh.n_triangles()],
-            viscosity: &vec![1.0; n],
-            friction: &friction,
-            lipid: &state.lipid,
-            area_compression_modulus: 1e12,
-            step: 1e-3,
-            deviatoric: false,
-            freedom: &vec![Freedom::Free; n],
-        },
-        &mut connectivity.values,
-    );
-    connectivity.factor.factorise(&connectivity.values)?;
+    let Connectivity { pattern, values, solver, .. } = &mut connectivity;
+    let input = MatrixInput {
+        topology: &bare.topology,
+        positions: &bare.mesh.positions,
+        geometry: &bare.geometry,
+        pattern,
+        bending_rows: &bare.bending_rows_and_gradient(2.0).0,
+        bending_rigidity: &vec![1.0; n],
+        stress: &vec![none; bare.mesh.n_triangles()],
+        viscosity: &vec![1.0; n],
+        friction: &friction,
+        lipid: &state.lipid,
+        area_compression_modulus: 1e12,
+        step: 1e-3,
+        deviatoric: false,
+        freedom: &vec![Freedom::Free; n],
+    };
+    assemble(&input, values);
     let load = without_rigid(bare, load);
     let mut y = vec![0.0; 4 * n];
     for i in 0..n {
         let force = load[i] * area[i];
         y[4 * i..4 * i + 3].copy_from_slice(&[force.x, force.y, force.z]);
     }
-    connectivity.factor.solve_refined(&connectivity.values, &mut y);
+    let system = LinearSystem { values, borders: &[], input: &input };
+    solver.solve(&system, &vec![0.0; 4 * n], &mut y, Origin::default, &mut Timings::default())?;
     let velocity: Vec<Vec3> = (0..n).map(|i| Vec3::new(y[4 * i], y[4 * i + 1], y[4 * i + 2])).collect();
     let tension: Vec<f64> = (0..n).map(|i| y[4 * i + 3]).collect();
     let mean = tension.iter().zip(area).map(|(t, a)| t * a).sum::<f64>() / bare.geometry.total_area;

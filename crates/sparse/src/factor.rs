@@ -41,6 +41,13 @@ impl Factor {
         &self.analysis
     }
 
+    /// Gives the memory back until the next factorisation.
+    pub fn release(&mut self) {
+        self.valid = false;
+        self.values = Vec::new();
+        self.arena = Vec::new();
+    }
+
     /// Factorises the matrix with the given values, one per entry of the pattern.
     ///
     /// # Errors
@@ -61,6 +68,8 @@ impl Factor {
             });
         }
         let plan = &self.analysis.plan;
+        self.values.resize(plan.factor_length, 0.0);
+        self.arena.resize(plan.arena_length, 0.0);
         Numeric { plan, values }
             .run(&mut self.values, &mut self.arena)
             .map_err(|place| SparseError::SingularPivot { unknown: self.analysis.order()[place] })?;

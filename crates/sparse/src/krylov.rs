@@ -54,12 +54,30 @@ impl GmresWorkspace {
 /// # Panics
 /// If `rhs` and `x` differ in length.
 pub fn gmres(
+    apply: impl FnMut(&[f64], &mut [f64]),
+    precondition: impl FnMut(&mut [f64]),
+    rhs: &[f64],
+    x: &mut [f64],
+    tolerance: f64,
+    max_iterations: usize,
+    workspace: &mut GmresWorkspace,
+) -> GmresOutcome {
+    let promising = |iterations, _| iterations < max_iterations;
+    gmres_while(apply, precondition, rhs, x, tolerance, promising, workspace)
+}
+
+/// As [`gmres`], as long as `promising` of the number of iterations done and the part of the
+/// first residual that is left.
+///
+/// # Panics
+/// If `rhs` and `x` differ in length.
+pub fn gmres_while(
     mut apply: impl FnMut(&[f64], &mut [f64]),
     mut precondition: impl FnMut(&mut [f64]),
     rhs: &[f64],
     x: &mut [f64],
     tolerance: f64,
-    max_iterations: usize,
+    promising: impl Fn(usize, f64) -> bool,
     workspace: &mut GmresWorkspace,
 ) -> GmresOutcome {
     let n = rhs.len();
@@ -81,7 +99,8 @@ pub fn gmres(
         workspace.rotations.clear();
         workspace.reduced_rhs.clear();
         workspace.reduced_rhs.push(beta);
-        while iterations < max_iterations {
+        let mut left = 1.0;
+        while promising(iterations, left) {
             let k = iterations;
             let norm_before = extend_basis(&mut apply, &mut precondition, k, n, workspace);
             if !norm_before.is_finite() {
@@ -89,6 +108,7 @@ pub fn gmres(
             }
             iterations += 1;
             let next = rotate(k, workspace);
+            left = next.abs() / beta;
             // The new direction vanished: the Krylov space holds the solution.
             let exhausted = workspace.hessenberg[k][k + 1] <= f64::EPSILON * norm_before;
             if next.abs() <= target || exhausted {

@@ -23,7 +23,7 @@ mod tree;
 
 pub use error::SparseError;
 pub use factor::Factor;
-pub use krylov::{GmresOutcome, GmresWorkspace, gmres};
+pub use krylov::{GmresOutcome, GmresWorkspace, gmres, gmres_while};
 pub use market::write_matrix_market;
 pub use pattern::{Pattern, symmetric_multiply};
 pub use symbolic::Analysis;

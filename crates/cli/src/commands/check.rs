@@ -132,6 +132,7 @@ fn in_words(case: &Case<'_>, report: &Report) {
             with_unit(cost.seconds_per_step, "s"),
             duration(1e3 * cost.seconds_per_step)
         ));
+        say(format_args!("    linear systems: {}", cost.way.words()));
     }
     for note in &report.findings.notes {
         say(format_args!("Note: {note}"));
@@ -179,6 +180,7 @@ fn in_json(case: &Case<'_>, report: &Report, resolved: bool) -> Value {
         .map(|cost| {
             json!({
                 "vertices": cost.vertices, "memory_bytes": cost.bytes, "seconds_per_step": cost.seconds_per_step,
+                "linear_systems": cost.way.words(),
             })
         })
         .collect();

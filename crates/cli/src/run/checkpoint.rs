@@ -28,7 +28,7 @@ const MAGIC: [u8; 8] = *b"PELLICKP";
 /// Counts up with every change of what a checkpoint holds.
 const FORMAT: u32 = 2;
 const HEADER: usize = 8 + 4 + 4 + 4 + 32;
-/// Most bytes, packed or unpacked: enough for 400,000 vertices (about 230 bytes each). Whatever such a file says, reading
+/// Most bytes, packed or unpacked: enough for 330,000 vertices (about 290 bytes each). Whatever such a file says, reading
 /// it takes less than 1 GB: small numbers grow to at most four times their size in memory, lists by doubling.
 const MOST_BYTES: usize = 96 << 20;
 
@@ -174,6 +174,9 @@ impl Checkpoint {
             || !(state.time >= 0.0 && state.time.is_finite())
             || !state.mesh.positions.iter().all(finite)
             || !self.memory.ordered_at.iter().all(finite)
+            || !self.memory.origin.iter().all(|then| {
+                positive(then.step) && then.positions.iter().all(finite) && then.lipid.iter().all(|m| positive(*m))
+            })
             || !state.lipid.iter().all(|m| positive(*m))
             || !state.mesh.period.is_none_or(positive)
         {

@@ -96,6 +96,11 @@ impl Driver {
             None => ("interrupted", "the run was interrupted".to_owned()),
         };
         self.log.line(format_args!("ended: {words}"));
+        let t = &self.simulation.timings;
+        self.log.line(format_args!(
+            "since this start: {} linear systems, {} factors, {} iterations, {} new connectivities",
+            t.systems, t.factors, t.iterations, t.analyses
+        ));
         let outcome = Outcome { word, words: &words, warnings: &self.warnings };
         summary::write(&self.folder, &self.plan, &checkpoint, &row, &outcome)?;
         self.frames.finish()?;

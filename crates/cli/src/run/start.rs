@@ -69,6 +69,7 @@ pub fn start(
         plan.title,
         simulation.state.mesh.n_vertices()
     ));
+    log.line(format_args!("linear systems: {}", simulation.connectivity.solver.way().words()));
     for warning in &warnings {
         log.line(format_args!("warning: {warning}"));
         progress.warn(warning);

@@ -43,6 +43,14 @@ pub struct Accounts {
     pub remeshing: f64,
     /// Rows, frames and checkpoints, as far as the run waited for them.
     pub output: f64,
+    /// Linear systems of the motion.
+    pub systems: u64,
+    /// Factors made for them.
+    pub factors: u64,
+    /// Krylov iterations for them.
+    pub iterations: u64,
+    /// Connectivities analysed because the mesh changed.
+    pub analyses: u64,
 }
 
 impl Accounts {
@@ -61,6 +69,10 @@ impl Accounts {
             remap: self.remap + timings.remap,
             remeshing: self.remeshing + timings.remeshing,
             output: self.output + output,
+            systems: self.systems + timings.systems,
+            factors: self.factors + timings.factors,
+            iterations: self.iterations + timings.iterations,
+            analyses: self.analyses + timings.analyses,
         }
     }
 
@@ -125,6 +137,12 @@ fn summary(plan: &Plan, now: &Checkpoint, row: &Row, outcome: &Outcome) -> Value
             "refused": ledger.refused,
             "bounded_by": cursor.bounded_by.to_json(),
             "refused_for": cursor.refused_for.to_json(),
+        },
+        "solver": {
+            "systems": now.accounts.systems,
+            "factors": now.accounts.factors,
+            "iterations": now.accounts.iterations,
+            "new_connectivities": now.accounts.analyses,
         },
         "output": { "rows": cursor.rows, "frames": cursor.frames },
         "timings": now.accounts.to_json(),

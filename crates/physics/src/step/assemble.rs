@@ -40,7 +40,7 @@ impl Freedom {
     }
 
     #[inline]
-    fn reduce_rows(&self, m: Matrix3<f64>) -> Matrix3<f64> {
+    pub(super) fn reduce_rows(&self, m: Matrix3<f64>) -> Matrix3<f64> {
         match self {
             Freedom::Free => m,
             Freedom::Along(direction) => {
@@ -54,7 +54,7 @@ impl Freedom {
     }
 
     #[inline]
-    fn reduce_columns(&self, m: Matrix3<f64>) -> Matrix3<f64> {
+    pub(super) fn reduce_columns(&self, m: Matrix3<f64>) -> Matrix3<f64> {
         match self {
             Freedom::Free => m,
             Freedom::Along(direction) => {
@@ -84,12 +84,16 @@ pub struct PositiveStress {
 pub struct MatrixInput<'a> {
     /// Connectivity.
     pub topology: &'a Topology,
+    /// Positions of the vertices.
+    pub positions: &'a [Vec3],
     /// Geometry at the start of the step.
     pub geometry: &'a Geometry,
     /// Scatter indices.
     pub pattern: &'a BlockPattern,
     /// Rows J of the bending residuals over the stencils.
     pub bending_rows: &'a [Vec3],
+    /// κ at vertices.
+    pub bending_rigidity: &'a [f64],
     /// Positive stress of each triangle.
     pub stress: &'a [PositiveStress],
     /// Shear viscosity at vertices.
@@ -123,7 +127,7 @@ pub fn assemble(input: &MatrixInput, values: &mut [f64]) {
     let mut first = 0;
     while first < n {
         let end = (first + CHUNK).min(n);
-        let length = input.pattern.pattern.col_ptr[4 * end] - input.pattern.pattern.col_ptr[4 * first];
+        let length = input.pattern.piece_start[end] - input.pattern.piece_start[first];
         let (piece, tail) = rest.split_at_mut(length);
         pieces.push((first, piece));
         rest = tail;

@@ -1,12 +1,12 @@
 //! What belongs to one connectivity: analysed once, used in every step until the mesh changes.
 
+use super::linear::LinearSolver;
 use super::pattern::BlockPattern;
+use super::preconditioner::{Preconditioner, Way};
 use crate::PhysicsError;
 use crate::state::State;
-use pellicle_sparse::{Analysis, Factor};
 use pellicle_surface::geometry::Stencils;
 use pellicle_surface::{Topology, Vec3};
-use std::sync::Arc;
 
 /// Everything that belongs to one connectivity.
 pub struct Connectivity {
@@ -16,10 +16,8 @@ pub struct Connectivity {
     pub stencils: Stencils,
     /// Scatter indices.
     pub pattern: BlockPattern,
-    /// Symbolic factorisation.
-    pub analysis: Arc<Analysis>,
-    /// Numeric factorisation, storage reused.
-    pub factor: Factor,
+    /// Solver of the linear systems.
+    pub solver: LinearSolver,
     /// Values of the matrix, storage reused.
     pub values: Vec<f64>,
     /// Positions of the vertices that the order of elimination was chosen by.
@@ -40,19 +38,24 @@ impl Connectivity {
     /// # Errors
     /// A mesh that is not a manifold.
     pub fn ordered(state: &State, ordered_at: Vec<Vec3>) -> Result<Self, PhysicsError> {
+        Self::with_way(state, ordered_at, Way::for_vertices(state.mesh.n_vertices()))
+    }
+
+    /// Analyse the connectivity of a state for a given way of solving the linear systems.
+    ///
+    /// # Errors
+    /// A mesh that is not a manifold.
+    pub fn with_way(state: &State, ordered_at: Vec<Vec3>, way: Way) -> Result<Self, PhysicsError> {
         let topology = Topology::new(state.mesh.n_vertices(), &state.mesh.triangles)?;
         let stencils = Stencils::new(&topology);
         let pattern = BlockPattern::new(&topology, &stencils);
-        let coordinates: Vec<[f64; 3]> = ordered_at.iter().map(|p| [p.x, p.y, p.z]).collect();
-        let analysis = Arc::new(Analysis::new(pattern.pattern.clone(), 4, &coordinates)?);
-        let factor = Factor::new(&analysis);
-        let values = vec![0.0; pattern.pattern.row_idx.len()];
+        let solver = LinearSolver::new(Preconditioner::new(way, &topology, &pattern, &ordered_at)?);
+        let values = vec![0.0; pattern.entries()];
         Ok(Self {
             topology,
             stencils,
             pattern,
-            analysis,
-            factor,
+            solver,
             values,
             ordered_at,
         })

@@ -1,8 +1,10 @@
 //! The mechanical part of a step: one linearised solve for velocity, tension and the scalar unknowns.
 
-use super::assemble::{MatrixInput, assemble};
-use super::borders::{reservoir_border, solve_bordered, trap_border, volume_border};
+use super::assemble::{Freedom, MatrixInput, assemble};
+use super::borders::{Border, reservoir_border, trap_border, volume_border};
 use super::connectivity::Connectivity;
+use super::linear::{LinearSystem, Origin};
+use super::pattern::BlockPattern;
 use super::forces::{Forces, forces, freedoms, remove_rigid_load};
 use crate::PhysicsError;
 use crate::dissipation::surroundings::{Friction, Surroundings};
@@ -10,10 +12,11 @@ use crate::energy::reservoirs::offered_pressure;
 use crate::energy::total::Measured;
 use crate::parameters::{AreaCondition, Parameters, Pull, VolumeCondition, along_path};
 use crate::state::{State, load_weights, pull_at};
+use pellicle_surface::geometry::{Geometry, Stencils};
 use pellicle_surface::{Topology, Vec3};
 use std::time::Instant;
 
-/// Seconds spent in the parts of a step.
+/// Seconds spent in the parts of a step, and counts.
 #[derive(Clone, Copy, Debug, Default)]
 pub struct Timings {
     /// Energies, gradients, geometry.
@@ -30,6 +33,14 @@ pub struct Timings {
     pub remap: f64,
     /// Flips, splits, collapses and new analyses.
     pub remeshing: f64,
+    /// Connectivities analysed because the mesh changed.
+    pub analyses: u64,
+    /// Linear systems of the motion solved.
+    pub systems: u64,
+    /// Factors made for them.
+    pub factors: u64,
+    /// Krylov iterations for them.
+    pub iterations: u64,
 }
 
 /// Result of the mechanical solve.
@@ -58,6 +69,147 @@ pub struct Motion {
 }
 
 
+/// What the linear system of a step is made of, beside the values of its matrix.
+struct Parts {
+    forces: Forces,
+    freedom: Vec<Freedom>,
+    surroundings: Friction,
+    friction: Vec<f64>,
+    deviatoric: bool,
+    borders: Vec<Border>,
+    has_volume: bool,
+    exchanging: bool,
+    weights: Vec<Vec<(u32, f64)>>,
+}
+
+impl Parts {
+    fn matrix<'a>(
+        &'a self,
+        parameters: &Parameters,
+        topology: &'a Topology,
+        pattern: &'a BlockPattern,
+        state: &'a State,
+        measured: &'a Measured,
+        step: f64,
+    ) -> MatrixInput<'a> {
+        MatrixInput {
+            topology,
+            positions: &state.mesh.positions,
+            geometry: &measured.geometry,
+            pattern,
+            bending_rows: &self.forces.rows,
+            bending_rigidity: &measured.material.bending_rigidity,
+            stress: &self.forces.stress,
+            viscosity: &measured.material.shear_viscosity,
+            friction: &self.friction,
+            lipid: &state.lipid,
+            area_compression_modulus: parameters.area_compression_modulus,
+            step,
+            deviatoric: self.deviatoric,
+            freedom: &self.freedom,
+        }
+    }
+}
+
+fn parts(
+    parameters: &Parameters,
+    connectivity: &Connectivity,
+    state: &State,
+    measured: &Measured,
+    step: f64,
+) -> Parts {
+    let topology = &connectivity.topology;
+    let geometry = &measured.geometry;
+    let freedom = freedoms(parameters, topology, state, measured);
+    let forces = forces(parameters, connectivity, state, measured);
+    let surroundings = Friction {
+        coefficient: regularised_friction(parameters, geometry.total_area),
+    };
+    let mut borders = Vec::new();
+    let target_volume = match &parameters.volume {
+        VolumeCondition::Fixed(path) => along_path(path, state.time + step),
+        _ => None,
+    };
+    borders.extend(volume_border(parameters, geometry, &freedom, target_volume, step));
+    let has_volume = borders.len() == 1;
+    let mut exchanging = false;
+    if let AreaCondition::Reservoir(tension) = parameters.area
+        && topology.is_closed()
+    {
+        borders.push(reservoir_border(state, measured, &forces, tension));
+        exchanging = true;
+    }
+    let mut weights = Vec::new();
+    for (load, place) in parameters.loads.iter().zip(&state.loads) {
+        let patch = load_weights(&state.mesh, geometry, topology, place.centre, load.patch_radius);
+        if let Pull::Trap { stiffness, .. } = &load.pull {
+            let gap = place.start + pull_at(&load.pull, state.time + step) - place.position;
+            for axis in 0..3 {
+                let n = topology.n_vertices;
+                borders.push(trap_border(&patch, &freedom, n, axis, *stiffness, gap[axis], step));
+            }
+        }
+        weights.push(patch);
+    }
+    Parts {
+        friction: surroundings.surrogate(geometry),
+        deviatoric: matches!(parameters.area, AreaCondition::Reservoir(_)),
+        forces,
+        freedom,
+        surroundings,
+        borders,
+        has_volume,
+        exchanging,
+        weights,
+    }
+}
+
+/// Forces that the bulk, the rim and the loads exert on the vertices, with the membrane's own.
+fn push(parameters: &Parameters, topology: &Topology, state: &State, measured: &Measured, parts: &Parts, end: f64) -> Vec<Vec3> {
+    let geometry = &measured.geometry;
+    let mut push: Vec<Vec3> = parts.forces.gradient.iter().map(|g| -g).collect();
+    if let AreaCondition::Reservoir(tension) = parameters.area {
+        add_rim_traction(topology, geometry, tension, &mut push);
+    }
+    if let VolumeCondition::Pressure(pressure) = &parameters.volume {
+        for (f, g) in push.iter_mut().zip(&geometry.volume_gradient) {
+            *f += g * *pressure;
+        }
+    }
+    for (load, patch) in parameters.loads.iter().zip(&parts.weights) {
+        if let Pull::Force(_) = &load.pull {
+            let force = pull_at(&load.pull, end);
+            for (i, w) in patch {
+                push[*i as usize] += force * *w;
+            }
+        }
+    }
+    if parameters.loads.is_empty() && topology.is_closed() && parameters.friction == 0.0 {
+        remove_rigid_load(state, measured, &mut push);
+    }
+    push
+}
+
+/// Make again the factor that a simulation remembers.
+///
+/// # Errors
+/// A singular system.
+pub(super) fn recall(
+    parameters: &Parameters,
+    connectivity: &mut Connectivity,
+    state: &State,
+    origin: &Origin,
+) -> Result<(), PhysicsError> {
+    let then = origin.state(state);
+    let mut measured = Measured::default();
+    measured.update(parameters, &connectivity.topology, &then);
+    let parts = parts(parameters, connectivity, &then, &measured, origin.step);
+    let Connectivity { topology, pattern, values, solver, .. } = connectivity;
+    let input = parts.matrix(parameters, topology, pattern, &then, &measured, origin.step);
+    assemble(&input, values);
+    solver.factorise(&LinearSystem { values, borders: &parts.borders, input: &input })
+}
+
 /// Solve for the motion over one step from a measured state.
 ///
 /// # Errors
@@ -71,116 +223,49 @@ pub fn solve(
     timings: &mut Timings,
 ) -> Result<Motion, PhysicsError> {
     let clock = Instant::now();
-    let forces = forces(parameters, connectivity, state, measured);
-    let topology = &connectivity.topology;
-    let n = topology.n_vertices;
-    let geometry = &measured.geometry;
-    let freedom = freedoms(parameters, topology, state, measured);
-    let surroundings = Friction {
-        coefficient: regularised_friction(parameters, geometry.total_area),
-    };
-    let friction = surroundings.surrogate(geometry);
-    let deviatoric = matches!(parameters.area, AreaCondition::Reservoir(_));
+    let parts = parts(parameters, connectivity, state, measured, step);
     timings.forces += clock.elapsed().as_secs_f64();
 
     let clock = Instant::now();
-    assemble(
-        &MatrixInput {
-            topology,
-            geometry,
-            pattern: &connectivity.pattern,
-            bending_rows: &forces.rows,
-            stress: &forces.stress,
-            viscosity: &measured.material.shear_viscosity,
-            friction: &friction,
-            lipid: &state.lipid,
-            area_compression_modulus: parameters.area_compression_modulus,
-            step,
-            deviatoric,
-            freedom: &freedom,
-        },
-        &mut connectivity.values,
-    );
+    let Connectivity { topology, pattern, stencils, values, solver, .. } = connectivity;
+    let input = parts.matrix(parameters, topology, pattern, state, measured, step);
+    assemble(&input, values);
     timings.assembly += clock.elapsed().as_secs_f64();
 
-    let clock = Instant::now();
-    connectivity.factor.factorise(&connectivity.values)?;
-    timings.factorisation += clock.elapsed().as_secs_f64();
-
-    let clock = Instant::now();
-    let mut push: Vec<Vec3> = forces.gradient.iter().map(|g| -g).collect();
-    if let AreaCondition::Reservoir(tension) = parameters.area {
-        add_rim_traction(topology, geometry, tension, &mut push);
-    }
-    let mut borders = Vec::new();
-    let target_volume = match &parameters.volume {
-        VolumeCondition::Pressure(pressure) => {
-            for (f, g) in push.iter_mut().zip(&geometry.volume_gradient) {
-                *f += g * *pressure;
-            }
-            None
-        }
-        VolumeCondition::Fixed(path) => along_path(path, state.time + step),
-        VolumeCondition::Osmotic { .. } => None,
-    };
-    if let Some(border) = volume_border(parameters, geometry, &freedom, target_volume, step) {
-        borders.push(border);
-    }
-    let has_volume = borders.len() == 1;
-    let exchanging = match parameters.area {
-        AreaCondition::Reservoir(tension) if topology.is_closed() => {
-            borders.push(reservoir_border(state, measured, &forces, tension));
-            true
-        }
-        _ => false,
-    };
-    let mut weights = Vec::new();
-    for (load, place) in parameters.loads.iter().zip(&state.loads) {
-        let patch = load_weights(&state.mesh, geometry, topology, place.centre, load.patch_radius);
-        match &load.pull {
-            Pull::Force(_) => {
-                let force = pull_at(&load.pull, state.time + step);
-                for (i, w) in &patch {
-                    push[*i as usize] += force * *w;
-                }
-            }
-            Pull::Trap { stiffness, .. } => {
-                let gap = place.start + pull_at(&load.pull, state.time + step) - place.position;
-                for axis in 0..3 {
-                    borders.push(trap_border(&patch, &freedom, n, axis, *stiffness, gap[axis], step));
-                }
-            }
-        }
-        weights.push(patch);
-    }
-    if parameters.loads.is_empty() && topology.is_closed() && parameters.friction == 0.0 {
-        remove_rigid_load(state, measured, &mut push);
-    }
-    let mut y = vec![0.0; 4 * n];
+    let n = topology.n_vertices;
+    let geometry = &measured.geometry;
+    let Parts { freedom, borders, forces, weights, .. } = &parts;
+    let push = push(parameters, topology, state, measured, &parts, state.time + step);
+    let mut y = vec![0.0; 4 * n + borders.len()];
+    let mut guess = vec![0.0; 4 * n + borders.len()];
     for i in 0..n {
         y[4 * i..4 * i + 3].copy_from_slice(&freedom[i].reduce(&push[i]));
         y[4 * i + 3] = -(geometry.vertex_area[i] - state.lipid[i]) / step;
+        guess[4 * i..4 * i + 3].copy_from_slice(&freedom[i].reduce(&state.velocity[i]));
+        guess[4 * i + 3] = state.tension[i];
     }
-    let mut residual: f64 = 0.0;
-    let (factor, values) = (&mut connectivity.factor, &connectivity.values);
-    let scalars = solve_bordered(&borders, &mut y, |right| {
-        residual = residual.max(factor.solve_refined(values, right));
-        Ok(())
-    })?;
+    for (k, border) in borders.iter().enumerate() {
+        y[4 * n + k] = border.target;
+    }
+    if parts.has_volume {
+        guess[4 * n] = state.pressure;
+    }
+    let system = LinearSystem { values, borders, input: &input };
+    let residual = solver.solve(&system, &guess, &mut y, || Origin::of(state, step), timings)?;
     if y.iter().any(|v| !v.is_finite()) {
         return Err(PhysicsError::Contradiction("the linear solve gave a value that is not finite"));
     }
-    timings.solves += clock.elapsed().as_secs_f64();
+    let (y, scalars) = y.split_at(4 * n);
 
     let velocity: Vec<Vec3> = (0..n).map(|i| freedom[i].expand(&y[4 * i..4 * i + 3])).collect();
     let tension: Vec<f64> = (0..n).map(|i| y[4 * i + 3]).collect();
     let mut next = scalars.iter();
-    let pressure = if has_volume {
+    let pressure = if parts.has_volume {
         next.next().copied().unwrap_or(0.0)
     } else {
         offered_pressure(&parameters.volume, geometry.volume).unwrap_or(0.0)
     };
-    let exchange = if exchanging { next.next().copied().unwrap_or(0.0) } else { 0.0 };
+    let exchange = if parts.exchanging { next.next().copied().unwrap_or(0.0) } else { 0.0 };
     let mut load_forces = Vec::new();
     for load in &parameters.loads {
         load_forces.push(match &load.pull {
@@ -194,9 +279,9 @@ pub fn solve(
             }
         });
     }
-    let viscous = boussinesq_rate(state, measured, &velocity, deviatoric);
-    let drag = surroundings.dissipation(geometry, &velocity);
-    let stiff = implicit_work(connectivity, &forces, geometry, &velocity, step);
+    let viscous = boussinesq_rate(state, measured, &velocity, parts.deviatoric);
+    let drag = parts.surroundings.dissipation(geometry, &velocity);
+    let stiff = implicit_work(topology, stencils, forces, geometry, &velocity, step);
     let volume_rate: f64 = geometry
         .volume_gradient
         .iter()
@@ -217,7 +302,7 @@ pub fn solve(
         pressure,
         exchange,
         forces: load_forces,
-        weights,
+        weights: weights.clone(),
         dissipated: step * (viscous + drag),
         permeation: step * permeation,
         lag: stiff + baths,
@@ -244,14 +329,14 @@ fn boussinesq_rate(state: &State, measured: &Measured, velocity: &[Vec3], deviat
 
 /// ½ dt² vᵀ(JᵀJ + H_λ)v.
 fn implicit_work(
-    connectivity: &Connectivity,
+    topology: &Topology,
+    stencils: &Stencils,
     forces: &Forces,
-    geometry: &pellicle_surface::geometry::Geometry,
+    geometry: &Geometry,
     velocity: &[Vec3],
     step: f64,
 ) -> f64 {
-    let stencils = &connectivity.stencils;
-    let bending: f64 = (0..connectivity.topology.n_vertices)
+    let bending: f64 = (0..topology.n_vertices)
         .map(|i| {
             let rate: f64 = stencils
                 .range(i)
@@ -260,8 +345,7 @@ fn implicit_work(
             rate * rate
         })
         .sum();
-    let stress: f64 = connectivity
-        .topology
+    let stress: f64 = topology
         .triangles
         .iter()
         .enumerate()
@@ -281,7 +365,7 @@ fn implicit_work(
 
 fn add_rim_traction(
     topology: &Topology,
-    geometry: &pellicle_surface::geometry::Geometry,
+    geometry: &Geometry,
     tension: f64,
     push: &mut [Vec3],
 ) {

@@ -2,6 +2,8 @@
 
 use super::advance::Simulation;
 use super::connectivity::Connectivity;
+use super::linear::{Origin, Tally};
+use super::mechanics;
 use crate::state::Ledger;
 use crate::{Parameters, PhysicsError, State};
 use pellicle_surface::Vec3;
@@ -19,6 +21,10 @@ pub struct Memory {
     pub chemical_potential: Vec<f64>,
     /// Positions of the vertices when the present connectivity was analysed.
     pub ordered_at: Vec<Vec3>,
+    /// What the factor in use was made from; none when the next step makes a new one.
+    pub origin: Option<Origin>,
+    /// What it has cost.
+    pub tally: Tally,
 }
 
 impl Simulation {
@@ -37,11 +43,14 @@ impl Simulation {
 
     /// What has to be kept beside [`Simulation::state`] to go on later with [`Simulation::restore`].
     pub fn memory(&self) -> Memory {
+        let (origin, tally) = self.connectivity.solver.memory();
         Memory {
             mesh_velocity: self.mesh_velocity.clone(),
             wanted_edge: self.wanted_edge.clone(),
             chemical_potential: self.chemical_potential.clone(),
             ordered_at: self.connectivity.ordered_at.clone(),
+            origin,
+            tally,
         }
     }
 
@@ -59,6 +68,7 @@ impl Simulation {
             || !fits(memory.chemical_potential.len())
             || memory.wanted_edge.len() != n
             || memory.ordered_at.len() != n
+            || memory.origin.as_ref().is_some_and(|origin| !origin.fits(&state))
         {
             return Err(PhysicsError::Contradiction(
                 "what the simulation remembers does not belong to its surface",
@@ -71,6 +81,11 @@ impl Simulation {
         if memory.ordered_at != simulation.connectivity.ordered_at {
             simulation.connectivity = Connectivity::ordered(&simulation.state, memory.ordered_at)?;
         }
+        let Self { parameters, connectivity, state, .. } = &mut simulation;
+        if let Some(origin) = &memory.origin {
+            mechanics::recall(parameters, connectivity, state, origin)?;
+        }
+        connectivity.solver.take_up(memory.origin, memory.tally);
         simulation.mesh_velocity = memory.mesh_velocity;
         simulation.wanted_edge = memory.wanted_edge;
         simulation.chemical_potential = memory.chemical_potential;

@@ -19,6 +19,7 @@ use pellicle_surface::remesh::{
     RemeshOptions, SizingRequest, VertexData, curvature_size, flip_to_delaunay_with, quality, remesh, sizing_field,
 };
 use pellicle_surface::{Mesh, Topology, Vec3};
+use rayon::prelude::*;
 
 /// Accepted steps between looks at the wanted edge lengths.
 const SIZING_EVERY: u64 = 4;
@@ -70,7 +71,8 @@ impl Simulation {
         let Some(care) = self.parameters.mesh else {
             return Ok(report);
         };
-        let worst = quality(&self.state.mesh).into_iter().fold(1.0, f64::min);
+        let qualities = quality(&self.state.mesh);
+        let worst = qualities.iter().copied().fold(1.0, f64::min);
         let allowance = if worst < URGENT { f64::INFINITY } else {
             ALLOWANCE * released.max(0.0) + self.state.ledger.mesh_credit
         };
@@ -95,7 +97,9 @@ impl Simulation {
             }
         }
         let left = allowance - (self.energies.total() - before);
-        report.smoothed = self.smooth_poor(left)?;
+        let changed = report.flips + report.splits + report.collapses > 0;
+        let qualities = if changed { quality(&self.state.mesh) } else { qualities };
+        report.smoothed = self.smooth_poor(&qualities, left)?;
         report.energy_change = self.energies.total() - before;
         let ledger = &mut self.state.ledger;
         ledger.mesh_energy += report.energy_change;
@@ -146,6 +150,9 @@ impl Simulation {
                 }
             }
         }
+        if self.is_delaunay() {
+            return Ok(None);
+        }
         let outcome = flip_to_delaunay_with(&self.state.mesh, &data(), FLIP_TOLERANCE)?;
         Ok((outcome.flips > 0).then(|| Proposal {
             counts: [outcome.flips, 0, 0],
@@ -154,6 +161,20 @@ impl Simulation {
             target_edge: self.wanted_edge.clone(),
             old_to_new: None,
         }))
+    }
+
+    /// Whether no edge asks for a flip; most steps end here, so the answer must be cheap.
+    fn is_delaunay(&self) -> bool {
+        let mesh = &self.state.mesh;
+        let cotangent = |apex: u32, i: u32, j: u32| {
+            let (u, v) = (mesh.edge(apex, i), mesh.edge(apex, j));
+            u.dot(&v) / u.cross(&v).norm().max(f64::MIN_POSITIVE)
+        };
+        self.connectivity
+            .topology
+            .hinges
+            .par_iter()
+            .all(|h| cotangent(h.k, h.i, h.j) + cotangent(h.l, h.j, h.i) >= -FLIP_TOLERANCE)
     }
 
     /// Whether some free edge is too long or too short for its wanted length.
@@ -281,7 +302,12 @@ impl Simulation {
         if change.is_nan() || change > allowance {
             return Ok(false);
         }
+        // The old factor makes room before the new one is laid out.
+        self.connectivity.solver.release();
+        self.connectivity.values = Vec::new();
+        self.diffusion = None;
         self.connectivity = Connectivity::new(&state)?;
+        self.timings.analyses += 1;
         self.state = state;
         self.wanted_edge = proposal.target_edge;
         self.forget_connectivity();
@@ -291,10 +317,10 @@ impl Simulation {
     }
 
     /// Smooth around poor triangles. Returns how many vertices were chosen.
-    fn smooth_poor(&mut self, allowance: f64) -> Result<usize, PhysicsError> {
+    fn smooth_poor(&mut self, qualities: &[f64], allowance: f64) -> Result<usize, PhysicsError> {
         let topology = &self.connectivity.topology;
         let mut chosen = vec![false; topology.n_vertices];
-        for (q, corners) in quality(&self.state.mesh).iter().zip(&topology.triangles) {
+        for (q, corners) in qualities.iter().zip(&topology.triangles) {
             if *q < POOR {
                 for &v in corners {
                     chosen[v as usize] = true;
