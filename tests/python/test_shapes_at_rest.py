@@ -124,7 +124,7 @@ frame_every = "0.5 s"
 
 def domains(folder, line_tension, width, across):
     """Relative errors of free energy and junction radius of a vesicle with λR/κ = line_tension."""
-    scenario = DOMAINS.format(edge=2 * width / across, line_tension=0.1 * line_tension, width=width, across=across)
+    scenario = DOMAINS.format(edge=1.8 * width / across, line_tension=0.1 * line_tension, width=width, across=across)
     run = program.run(folder, scenario + MEMBRANE, f"width_{width}")
     row = run.end
     radius = np.sqrt(row["area_m2"] / (4 * np.pi))
@@ -195,7 +195,7 @@ def coat(folder, tension, edge):
     row = run.end
     first = next(run.frames())[1]
     # A spot's rim is as wide as the mesh's mean edge: θ = ½[1 + tanh((0.35 − r)/width)] on the flat patch.
-    edges = first.extract_all_edges(use_all_points=True)
+    edges = first.extract_all_edges()
     width = float(np.mean(edges.compute_cell_sizes(area=False, volume=False)["Length"]))
 
     def tanh(a):
