@@ -95,17 +95,27 @@ def measured_rate(folder, points, triangles, degree, mean, end) -> float:
     return np.log(after / before) / (stop - start)
 
 
-@pytest.mark.parametrize("degree, mean", [(2, 0.0), (2, 0.3), (4, 0.0)])
-def test_rate_of_a_wave(tmp_path, degree, mean):
-    operators = program.write_operators("sphere:642", tmp_path / "operators")
+def errors(folder, degree, mean, vertices):
+    """Errors of the program and of scikit-fem, relative to the larger of growth and decay, which nearly cancel."""
+    operators = program.write_operators(f"sphere:{vertices}", folder / "operators")
     points, triangles = operators["vertices"], operators["triangles"]
     exact = exact_rate(degree, mean)
     end = 0.12 / abs(exact)
-    ours = measured_rate(tmp_path, points, triangles, degree, mean, end)
+    ours = measured_rate(folder, points, triangles, degree, mean, end)
     theirs = assembled_rate(points, triangles, degree, mean, end)
-    # Growth and decay nearly cancel: errors count relative to the larger of the two.
     product = degree * (degree + 1)
     scale = 0.5 * DIFFUSION * product * max(abs(3 * mean**2 - 1), 0.5 * WIDTH**2 * product)
-    errors = [(ours - exact) / scale, (theirs - exact) / scale, (ours - theirs) / scale]
-    print(f"l = {degree}, u₀ = {mean}: s = {exact:.4f}/s; errors: program, scikit-fem, between them: {errors}")
-    assert max(map(abs, errors)) < 1
+    found = (ours - exact) / scale, (theirs - exact) / scale
+    print(f"l = {degree}, u₀ = {mean}, {vertices} vertices: s = {exact:.4f}/s; errors of program, scikit-fem: {found}")
+    return found
+
+
+# Measured: −7e-5 and 4e-4; −1.7e-3 and −4.2e-3; 3.6e-2 and −5.1e-2 (lumped and consistent mass err to either side).
+@pytest.mark.parametrize("degree, mean, limit", [(2, 0.0, 2e-3), (2, 0.3, 7e-3), (4, 0.0, 0.07)])
+def test_rate_of_a_wave(tmp_path, degree, mean, limit):
+    assert max(map(abs, errors(tmp_path, degree, mean, 642))) < limit
+
+
+@pytest.mark.long
+def test_rate_of_a_short_wave(tmp_path):
+    assert max(map(abs, errors(tmp_path, 4, 0.0, 2562))) < 1

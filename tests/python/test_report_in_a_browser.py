@@ -91,9 +91,9 @@ def look(page: Path, width: int, height: int, profile: Path, pdf=False):
         seen = driver.execute_script(BOXES)
         seen["console"] = [entry["message"] for entry in driver.get_log("browser")]
         events = [json.loads(entry["message"])["message"] for entry in driver.get_log("performance")]
-        seen["requests"] = [
-            event["params"]["request"]["url"] for event in events if event["method"] == "Network.requestWillBeSent"
-        ]
+        # Chromium's own start page asks for things of its own.
+        asked = [event["params"] for event in events if event["method"] == "Network.requestWillBeSent"]
+        seen["requests"] = [event["request"]["url"] for event in asked if event["documentURL"] == page.as_uri()]
         clip = {"x": 0, "y": 0, "width": width, "height": min(seen["height"], 8000), "scale": 1}
         shot = driver.execute_cdp_cmd("Page.captureScreenshot", {"captureBeyondViewport": True, "clip": clip})
         seen["picture"] = base64.b64decode(shot["data"])
