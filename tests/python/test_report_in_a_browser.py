@@ -139,6 +139,13 @@ def test_all_is_there_and_can_be_read(pages, tmp_path, name, width, height):
         for k, box in enumerate(boxes):
             assert box[2] > 0 and box[0] >= left - 1 and box[0] + box[2] <= left + wide + 1, (plot["name"], plot["texts"][k])
             assert not any(overlap(box, other) for other in boxes[k + 1 :]), (plot["name"], plot["texts"][k])
+        # Each axis has distinct labels: those in one column, and those in one row.
+        for place in (1, 0):
+            groups = {}
+            for text, box in plot["texts"]:
+                edge = box[1] if place else box[0] + box[2]
+                groups.setdefault(round(edge), []).append(text)
+            assert all(len(set(group)) == len(group) for group in groups.values()), (plot["name"], groups)
         assert min(plot["size"]) >= 8, f"{plot['name']}: letters of {min(plot['size']):.1f} pixels"
         assert any(re.fullmatch(r"time \[[mµn]?s\]", text) for text, _ in plot["texts"])
     for shape in seen["shapes"]:

@@ -65,17 +65,19 @@ pub fn plot(axes: &Axes, lines: &[Line], legend: &[Sample]) -> Option<String> {
     let x = |t: f64| LEFT + (t - start) / (end - start) * (WIDTH - LEFT - RIGHT);
     let y = |v: f64| HEIGHT - BOTTOM - (v - low) / (high - low) * (HEIGHT - TOP - BOTTOM);
     let mut body = String::new();
-    for t in ticks(start, end) {
+    let (times, step) = ticks(start, end);
+    for t in times {
         let at = x(t);
         body += &format!(
             "<line class=\"grid\" x1=\"{at:.1}\" y1=\"{TOP}\" x2=\"{at:.1}\" y2=\"{:.1}\"/>\
              <text x=\"{at:.1}\" y=\"{:.1}\" text-anchor=\"middle\">{}</text>",
             HEIGHT - BOTTOM,
             HEIGHT - BOTTOM + 14.0,
-            number(t)
+            tick(t, step)
         );
     }
-    for v in ticks(low, high) {
+    let (values, step) = ticks(low, high);
+    for v in values {
         let at = y(v);
         body += &format!(
             "<line class=\"grid\" x1=\"{LEFT}\" y1=\"{at:.1}\" x2=\"{:.1}\" y2=\"{at:.1}\"/>\
@@ -83,7 +85,7 @@ pub fn plot(axes: &Axes, lines: &[Line], legend: &[Sample]) -> Option<String> {
             WIDTH - RIGHT,
             LEFT - 5.0,
             at + 4.0,
-            number(v)
+            tick(v, step)
         );
     }
     for line in lines {
@@ -147,12 +149,18 @@ fn widen((low, high): (f64, f64), share: f64) -> (f64, f64) {
     }
 }
 
-/// Round values within a range, about five of them.
-fn ticks(low: f64, high: f64) -> Vec<f64> {
+/// A tick with as many decimals as its step has, so that no two look the same.
+fn tick(value: f64, step: f64) -> String {
+    let decimals = (-(step * (1.0 + 1e-9)).log10().floor()).max(0.0) as usize;
+    if decimals > 6 || value.abs() >= 1e6 { number(value) } else { format!("{value:.decimals$}") }
+}
+
+/// Round values within a range, about five of them, and their distance.
+fn ticks(low: f64, high: f64) -> (Vec<f64>, f64) {
     let rough = (high - low) / 5.0;
     let power = 10f64.powf(rough.log10().floor());
     let step = [1.0, 2.0, 5.0, 10.0].into_iter().find(|f| f * power >= rough).unwrap_or(10.0) * power;
     let first = (low / step).ceil() as i64;
     let last = (high / step).floor() as i64;
-    (first..=last).take(20).map(|k| k as f64 * step).collect()
+    ((first..=last).take(20).map(|k| k as f64 * step).collect(), step)
 }
