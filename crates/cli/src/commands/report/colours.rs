@@ -17,6 +17,9 @@ const CIVIDIS: [[f64; 3]; 10] = [
 /// Lines: Okabe & Ito, "Color universal design" (2008).
 const LINES: [&str; 7] = ["#0072b2", "#d55e00", "#009e73", "#cc79a7", "#e69f00", "#56b4e9", "#000000"];
 
+/// Number of the colour of what belongs to no run.
+pub const BLACK: usize = 6;
+
 /// Colour of a share from 0 to 1, with light from 0 to 1.
 pub fn of_share(share: f64, light: f64) -> String {
     let share = if share.is_finite() { share.clamp(0.0, 1.0) } else { 0.5 };
@@ -35,13 +38,13 @@ pub fn of_line(index: usize) -> &'static str {
 /// A bar that explains the colours of a quantity.
 pub fn bar(low: f64, high: f64, name: &str) -> String {
     let steps: String = (0..64)
-        .map(|k| format!("<rect x=\"{}\" y=\"2\" width=\"3.2\" height=\"12\" fill=\"{}\"/>", 70 + 3 * k, of_share(k as f64 / 63.0, 1.0)))
+        .map(|k| format!("<rect x=\"{}\" y=\"0\" width=\"3.2\" height=\"12\" fill=\"{}\"/>", 3 * k, of_share(k as f64 / 63.0, 1.0)))
         .collect();
     format!(
-        "<svg class=\"bar\" viewBox=\"0 0 640 18\" width=\"640\" height=\"18\" role=\"img\">{steps}\
-         <text x=\"64\" y=\"13\" text-anchor=\"end\">{}</text><text x=\"270\" y=\"13\">{} {}</text></svg>",
+        "<p class=\"legend\">{}: {} <svg viewBox=\"0 0 192 12\" width=\"192\" height=\"12\" role=\"img\" \
+         aria-label=\"colours\">{steps}</svg> {}</p>",
+        super::page::escape(name),
         super::page::number(low),
-        super::page::number(high),
-        super::page::escape(name)
+        super::page::number(high)
     )
 }

@@ -72,13 +72,18 @@ fn columns(path: &Path) -> Result<HashMap<String, Vec<Option<f64>>>, Failure> {
 }
 
 impl Run {
-    /// Points (time, factor × value) of a column; empty where the run has no such values.
-    pub fn line(&self, column: &str, factor: f64) -> Vec<(f64, f64)> {
+    /// Points (time, value) of a column; empty where the run has no such values.
+    pub fn line(&self, column: &str) -> Vec<(f64, f64)> {
         let (Some(times), Some(values)) = (self.columns.get("time_s"), self.columns.get(column)) else {
             return Vec::new();
         };
         let pairs = times.iter().zip(values);
-        pairs.filter_map(|(time, value)| Some(((*time)?, factor * (*value)?))).collect()
+        pairs.filter_map(|(time, value)| Some(((*time)?, (*value)?))).collect()
+    }
+
+    /// Time of the last row [s].
+    pub fn end(&self) -> Option<f64> {
+        self.columns.get("time_s")?.iter().rev().find_map(|time| *time)
     }
 
     /// A text of the summary, or a dash.

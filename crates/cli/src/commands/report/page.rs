@@ -5,15 +5,21 @@ use serde_json::Value;
 
 /// Style of the page, for the screen and for paper.
 pub const STYLE: &str = "body{font:15px/1.45 system-ui,sans-serif;max-width:1360px;margin:1.5em auto;padding:0 1em;color:#111}\
-h1,h2,h3{line-height:1.2}.plots{display:flex;flex-wrap:wrap;gap:1em}figure{margin:0;break-inside:avoid}\
-figcaption{font-weight:600}.shapes{display:flex;flex-wrap:wrap;gap:.6em}.shape figcaption{font-weight:400;text-align:center}\
-svg{max-width:100%;height:auto}svg text{font:11px system-ui,sans-serif;fill:#222}.grid{stroke:#ddd;stroke-width:1}\
+h1,h2,h3{line-height:1.2;overflow-wrap:anywhere}figure{margin:0;break-inside:avoid}figure>svg{display:block;width:100%;height:auto}\
+.plots{display:grid;grid-template-columns:repeat(auto-fill,minmax(min(100%,400px),1fr));gap:1.4em 1.8em}\
+.shapes{display:grid;grid-template-columns:repeat(6,1fr);gap:.6em;max-width:1260px}\
+figcaption{font-weight:600}.shape figcaption{font-weight:400;text-align:center}\
+svg text{font:12px system-ui,sans-serif;fill:#222}.grid{stroke:#ddd;stroke-width:1}\
 .box{fill:none;stroke:#444}.line{fill:none;stroke-width:1.6}.shape path{stroke-width:.5;stroke-linejoin:round}\
-.legend svg{vertical-align:middle}.legend{font-size:13px}.legend span{margin-right:1.2em;white-space:nowrap}\
-table{border-collapse:collapse;font-size:14px}td,th{border:1px solid #bbb;padding:.2em .6em;text-align:left;vertical-align:top}\
+.legend{font-size:13px}.legend svg{vertical-align:middle}.legend span{margin-right:1.2em;display:inline-block}\
+.wide{overflow-x:auto}table{border-collapse:collapse;font-size:14px}\
+td,th{border:1px solid #bbb;padding:.2em .6em;text-align:left;vertical-align:top}\
 pre{background:#f5f5f5;padding:.8em;overflow-x:auto;white-space:pre-wrap;font-size:13px}.small{font-size:13px;color:#444}\
 .warning{background:#fff3cd;padding:.4em .8em}\
-@media print{body{max-width:none;margin:0}.plots{display:block}figure{margin-bottom:1em}h2{break-before:auto;break-after:avoid}}";
+@media(max-width:700px){.shapes{grid-template-columns:repeat(2,1fr)}.wide{font-size:12px}}\
+@media print{body{max-width:none;margin:0;font-size:13px}.plots{grid-template-columns:1fr 1fr}\
+.shapes{grid-template-columns:repeat(3,1fr);break-inside:avoid}h2,h3{break-after:avoid}\
+details::details-content{content-visibility:visible;height:auto}pre{font-size:10px}}";
 
 /// Text that is safe within a page.
 pub fn escape(text: &str) -> String {
@@ -54,7 +60,8 @@ pub fn number(value: f64) -> String {
 
 /// What is said of each run, runs side by side.
 pub fn overview(runs: &[Run]) -> String {
-    const ROWS: [(&str, &str); 14] = [
+    const ROWS: [(&str, &str); 15] = [
+        ("title", "/title"),
         ("why it ended", "/stopped"),
         ("simulated time [s]", "/end/time_s"),
         ("free energy at the end [J]", "/end/free_energy_J"),
@@ -78,7 +85,7 @@ pub fn overview(runs: &[Run]) -> String {
             format!("<tr><th>{name}</th>{cells}</tr>\n")
         })
         .collect();
-    format!("<table><tr><th></th>{heads}</tr>\n{rows}</table>\n")
+    format!("<div class=\"wide\"><table><tr><th>run</th>{heads}</tr>\n{rows}</table></div>\n")
 }
 
 fn cell(run: &Run, pointer: &str) -> String {

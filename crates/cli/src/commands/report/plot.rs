@@ -1,11 +1,12 @@
 //! Line plots as SVG.
 
 use super::colours::of_line;
+pub use super::colours::BLACK;
 use super::page::{escape, number};
 
-const WIDTH: f64 = 640.0;
-const HEIGHT: f64 = 260.0;
-const LEFT: f64 = 78.0;
+const WIDTH: f64 = 460.0;
+const HEIGHT: f64 = 250.0;
+const LEFT: f64 = 62.0;
 const RIGHT: f64 = 12.0;
 const TOP: f64 = 12.0;
 const BOTTOM: f64 = 40.0;
@@ -22,40 +23,61 @@ const DASHES: [&str; 5] = [
 
 /// One line of a plot.
 pub struct Line {
-    /// What it shows.
-    pub name: String,
     /// Number of its colour.
     pub colour: usize,
     /// Number of its dashes.
     pub dashes: usize,
+    /// Its width.
+    pub width: f64,
     /// Its points.
     pub points: Vec<(f64, f64)>,
 }
 
+/// One entry of the legend.
+pub struct Sample {
+    /// What lines of this look show.
+    pub name: String,
+    /// Number of the colour.
+    pub colour: usize,
+    /// Number of the dashes.
+    pub dashes: usize,
+}
+
+/// What stands at a plot.
+pub struct Axes<'a> {
+    /// Title.
+    pub title: &'a str,
+    /// Unit of values.
+    pub unit: &'a str,
+    /// Unit of times.
+    pub time_unit: &'a str,
+    /// Time at which the axis ends.
+    pub end: f64,
+}
+
 /// A plot over time; `None` when there is nothing to show.
-pub fn plot(title: &str, unit: &str, lines: &[Line]) -> Option<String> {
-    let lines: Vec<&Line> = lines.iter().filter(|line| !line.points.is_empty()).collect();
+pub fn plot(axes: &Axes, lines: &[Line], legend: &[Sample]) -> Option<String> {
     let points = || lines.iter().flat_map(|line| &line.points);
     points().next()?;
-    let range = |of: &dyn Fn(&(f64, f64)) -> f64| {
-        points().map(of).fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), x| (low.min(x), high.max(x)))
-    };
-    let (start, end) = widen(range(&|p| p.0), 0.0);
-    let (low, high) = widen(range(&|p| p.1), 0.04);
+    let (low, high) = points().fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), (_, v)| (low.min(*v), high.max(*v)));
+    let (start, end) = widen((0.0, axes.end), 0.0);
+    let (low, high) = widen((low, high), 0.04);
     let x = |t: f64| LEFT + (t - start) / (end - start) * (WIDTH - LEFT - RIGHT);
     let y = |v: f64| HEIGHT - BOTTOM - (v - low) / (high - low) * (HEIGHT - TOP - BOTTOM);
     let mut body = String::new();
-    for t in ticks(start, end) {
+    let (times, step) = ticks(start, end);
+    for t in times {
         let at = x(t);
         body += &format!(
             "<line class=\"grid\" x1=\"{at:.1}\" y1=\"{TOP}\" x2=\"{at:.1}\" y2=\"{:.1}\"/>\
              <text x=\"{at:.1}\" y=\"{:.1}\" text-anchor=\"middle\">{}</text>",
             HEIGHT - BOTTOM,
             HEIGHT - BOTTOM + 14.0,
-            number(t)
+            tick(t, step)
         );
     }
-    for v in ticks(low, high) {
+    let (values, step) = ticks(low, high);
+    for v in values {
         let at = y(v);
         body += &format!(
             "<line class=\"grid\" x1=\"{LEFT}\" y1=\"{at:.1}\" x2=\"{:.1}\" y2=\"{at:.1}\"/>\
@@ -63,10 +85,10 @@ pub fn plot(title: &str, unit: &str, lines: &[Line]) -> Option<String> {
             WIDTH - RIGHT,
             LEFT - 5.0,
             at + 4.0,
-            number(v)
+            tick(v, step)
         );
     }
-    for line in &lines {
+    for line in lines {
         let every = line.points.len().div_ceil(MOST_POINTS).max(1);
         let last = line.points.len() - 1;
         let path: Vec<String> = line
@@ -77,7 +99,8 @@ pub fn plot(title: &str, unit: &str, lines: &[Line]) -> Option<String> {
             .map(|(_, (t, v))| format!("{:.1},{:.1}", x(*t), y(*v)))
             .collect();
         body += &format!(
-            "<polyline class=\"line\" stroke=\"{}\"{} points=\"{}\"/>",
+            "<polyline class=\"line\" style=\"stroke-width:{:.1}\" stroke=\"{}\"{} points=\"{}\"/>",
+            line.width,
             of_line(line.colour),
             DASHES[line.dashes % DASHES.len()],
             path.join(" ")
@@ -86,31 +109,31 @@ pub fn plot(title: &str, unit: &str, lines: &[Line]) -> Option<String> {
             body += &format!("<circle cx=\"{:.1}\" cy=\"{:.1}\" r=\"3\" fill=\"{}\"/>", x(*t), y(*v), of_line(line.colour));
         }
     }
-    let legend: Vec<String> = lines
+    let legend: String = legend
         .iter()
-        .map(|line| {
+        .map(|sample| {
             format!(
                 "<span><svg viewBox=\"0 0 36 8\" width=\"36\" height=\"8\"><line class=\"line\" x1=\"0\" y1=\"4\" x2=\"36\" \
-                 y2=\"4\" stroke=\"{}\"{}/></svg> {}</span>",
-                of_line(line.colour),
-                DASHES[line.dashes % DASHES.len()],
-                escape(&line.name)
+                 y2=\"4\" stroke=\"{}\"{}/></svg> {}</span> ",
+                of_line(sample.colour),
+                DASHES[sample.dashes % DASHES.len()],
+                escape(&sample.name)
             )
         })
         .collect();
-    let unit = if unit.is_empty() { String::new() } else { format!(" [{}]", escape(unit)) };
+    let title = escape(axes.title);
+    let unit = if axes.unit.is_empty() { String::new() } else { format!(" [{}]", escape(axes.unit)) };
     Some(format!(
-        "<figure><figcaption>{title}{unit}</figcaption>\
-         <svg viewBox=\"0 0 {WIDTH} {HEIGHT}\" width=\"{WIDTH}\" height=\"{HEIGHT}\" role=\"img\" aria-label=\"{title}\">\
+        "<figure class=\"plot\"><figcaption>{title}{unit}</figcaption>\
+         <svg viewBox=\"0 0 {WIDTH} {HEIGHT}\" role=\"img\" aria-label=\"{title}{unit} over time\">\
          {body}<rect class=\"box\" x=\"{LEFT}\" y=\"{TOP}\" width=\"{:.1}\" height=\"{:.1}\"/>\
-         <text x=\"{:.1}\" y=\"{:.1}\" text-anchor=\"middle\">time [s]</text></svg>\
-         <div class=\"legend\">{}</div></figure>\n",
+         <text x=\"{:.1}\" y=\"{:.1}\" text-anchor=\"middle\">time [{}]</text></svg>\
+         <div class=\"legend\">{legend}</div></figure>\n",
         WIDTH - LEFT - RIGHT,
         HEIGHT - TOP - BOTTOM,
         0.5 * (LEFT + WIDTH - RIGHT),
         HEIGHT - 6.0,
-        legend.join(" "),
-        title = escape(title)
+        escape(axes.time_unit)
     ))
 }
 
@@ -126,12 +149,18 @@ fn widen((low, high): (f64, f64), share: f64) -> (f64, f64) {
     }
 }
 
-/// Round values within a range, about five of them.
-fn ticks(low: f64, high: f64) -> Vec<f64> {
+/// A tick with as many decimals as its step has, so that no two look the same.
+fn tick(value: f64, step: f64) -> String {
+    let decimals = (-(step * (1.0 + 1e-9)).log10().floor()).max(0.0) as usize;
+    if decimals > 6 || value.abs() >= 1e6 { number(value) } else { format!("{value:.decimals$}") }
+}
+
+/// Round values within a range, about five of them, and their distance.
+fn ticks(low: f64, high: f64) -> (Vec<f64>, f64) {
     let rough = (high - low) / 5.0;
     let power = 10f64.powf(rough.log10().floor());
     let step = [1.0, 2.0, 5.0, 10.0].into_iter().find(|f| f * power >= rough).unwrap_or(10.0) * power;
     let first = (low / step).ceil() as i64;
     let last = (high / step).floor() as i64;
-    (first..=last).take(20).map(|k| k as f64 * step).collect()
+    ((first..=last).take(20).map(|k| k as f64 * step).collect(), step)
 }

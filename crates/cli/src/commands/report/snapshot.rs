@@ -3,6 +3,7 @@
 use super::colours::{bar, of_share};
 use super::data::Run;
 use super::page::{escape, number};
+use super::prefix::prefixed;
 use crate::failure::Failure;
 use pellicle_surface::{Topology, Vec3};
 use pellicle_vtk::{Limits, ReadSurface, read_surface};
@@ -34,22 +35,23 @@ pub fn snapshots(run: &Run) -> Result<String, Failure> {
     let Some(last) = shapes.last() else { return Ok("<p>This run has no frames.</p>".into()) };
     let field = FIELDS.into_iter().find(|name| last.surface.point_array(name).is_some());
     let range = field.map(|name| colour_range(&shapes, name));
+    let (factor, unit) = prefixed(Some(("s", 1)), last.time);
     // One direction and one scale for all, so that they can be compared.
     let (right, up, ahead) = view(last);
     let half = shapes.iter().map(|shape| half_width(shape, &right, &up)).fold(0.0, f64::max).max(f64::MIN_POSITIVE);
     let drawings: String = shapes
         .iter()
         .map(|shape| {
+            let time = format!("{} {}", number(factor * shape.time), escape(&unit));
             let triangles = draw(shape, [&right, &up, &ahead], half, field.zip(range));
             format!(
-                "<figure class=\"shape\"><svg viewBox=\"0 0 {SIDE} {SIDE}\" width=\"{SIDE}\" height=\"{SIDE}\" \
-                 role=\"img\" aria-label=\"shape\">{triangles}</svg><figcaption>{} s</figcaption></figure>",
-                number(shape.time)
+                "<figure class=\"shape\"><svg viewBox=\"0 0 {SIDE} {SIDE}\" role=\"img\" aria-label=\"shape at {time}\">\
+                 {triangles}</svg><figcaption>{time}</figcaption></figure>"
             )
         })
         .collect();
     let legend = match field.zip(range) {
-        Some((name, (low, high))) => bar(low, high, name),
+        Some((name, (low, high))) => bar(low, high, &name.replace('_', " ").replace("/um", "/µm")),
         None => String::new(),
     };
     Ok(format!(
