@@ -114,8 +114,3 @@ def errors(folder, degree, mean, vertices):
 @pytest.mark.parametrize("degree, mean, limit", [(2, 0.0, 2e-3), (2, 0.3, 7e-3), (4, 0.0, 0.07)])
 def test_rate_of_a_wave(tmp_path, degree, mean, limit):
     assert max(map(abs, errors(tmp_path, degree, mean, 642))) < limit
-
-
-@pytest.mark.long
-def test_rate_of_a_short_wave(tmp_path):
-    assert max(map(abs, errors(tmp_path, 4, 0.0, 2562))) < 1

@@ -71,7 +71,10 @@ def test_catenoid(tmp_path):
     assert fine["vertices"] == 10000 and (fine["genus"], fine["rims"], fine["volume"]) == (0, 2, None)
     assert fine["self_intersections"] == 0
     area, mean, bending = errors[10000]
-    assert abs(area) < 1 and abs(mean) < 1 and bending < 1
+    # Measured: −3.5e-5, 0.130, 1.6e-2; at 2,500 vertices −1.5e-4, 0.254, 2.3e-2. The last two are not of second order:
+    # vertices on rims see only half of their surroundings, and the mesh has not relaxed on the surface itself.
+    assert abs(area) < 1e-4 and abs(mean) < 0.2 and bending < 0.025
+    assert abs(mean) < 0.6 * abs(errors[2500][1]) and bending < errors[2500][2]
 
 
 @pytest.mark.parametrize("label", [2, 24], ids=["brain", "smaller"])
