@@ -141,8 +141,13 @@ fn apply(bytes: &mut Vec<u8>, damage: &Damage) {
     }
 }
 
+/// `PELLICLE_MUTATIONS` asks for a longer hunt.
+fn cases() -> u32 {
+    std::env::var("PELLICLE_MUTATIONS").ok().and_then(|text| text.parse().ok()).unwrap_or(2000)
+}
+
 proptest! {
-    #![proptest_config(ProptestConfig { cases: 2000, ..ProptestConfig::default() })]
+    #![proptest_config(ProptestConfig { cases: cases(), ..ProptestConfig::default() })]
 
     #[test]
     fn damaged_files_are_refused(damages in prop::collection::vec(damage(), 1..4)) {

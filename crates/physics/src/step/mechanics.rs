@@ -1,7 +1,7 @@
 //! The mechanical part of a step: one linearised solve for velocity, tension and the scalar unknowns.
 
 use super::assemble::{MatrixInput, assemble};
-use super::borders::{reservoir_border, solve_bordered, trap_border, volume_border};
+use super::borders::{PieceMeasure, reservoir_border, solve_bordered, trap_border, volume_border};
 use super::connectivity::Connectivity;
 use super::forces::{Forces, forces, freedoms, remove_rigid_load};
 use crate::PhysicsError;
@@ -39,10 +39,10 @@ pub struct Motion {
     pub velocity: Vec<Vec3>,
     /// Tension conjugate to the lipid constraint.
     pub tension: Vec<f64>,
-    /// Pressure difference.
-    pub pressure: f64,
-    /// Relative rate of lipid exchange with a closed surface's reservoir.
-    pub exchange: f64,
+    /// Pressure difference of each piece.
+    pub pressure: Vec<f64>,
+    /// Relative rate of each closed piece's lipid exchange with a reservoir; empty without.
+    pub exchange: Vec<f64>,
     /// Force of each load.
     pub forces: Vec<Vec3>,
     /// Weights of each load patch.
@@ -98,6 +98,7 @@ pub fn solve(
             step,
             deviatoric,
             freedom: &freedom,
+            repulsion: &forces.repulsion_stiffness,
         },
         &mut connectivity.values,
     );
@@ -113,7 +114,7 @@ pub fn solve(
         add_rim_traction(topology, geometry, tension, &mut push);
     }
     let mut borders = Vec::new();
-    let target_volume = match &parameters.volume {
+    let volume_after = match &parameters.volume {
         VolumeCondition::Pressure(pressure) => {
             for (f, g) in push.iter_mut().zip(&geometry.volume_gradient) {
                 *f += g * *pressure;
@@ -123,13 +124,21 @@ pub fn solve(
         VolumeCondition::Fixed(path) => along_path(path, state.time + step),
         VolumeCondition::Osmotic { .. } => None,
     };
-    if let Some(border) = volume_border(parameters, geometry, &freedom, target_volume, step) {
-        borders.push(border);
+    let pieces: Vec<PieceMeasure> = (measured.piece_volume.iter().zip(geometry.piece_areas(topology)))
+        .zip(&state.pieces)
+        .zip(0..)
+        .map(|(((volume, area), piece), index)| PieceMeasure { index, volume: *volume, area, share: piece.share })
+        .collect();
+    for piece in &pieces {
+        let target = volume_after.map(|volume| volume * piece.share);
+        borders.extend(volume_border(parameters, topology, geometry, &freedom, *piece, target, step));
     }
-    let has_volume = borders.len() == 1;
+    let has_volume = !borders.is_empty();
     let exchanging = match parameters.area {
         AreaCondition::Reservoir(tension) if topology.is_closed() => {
-            borders.push(reservoir_border(state, measured, &forces, tension));
+            for piece in &pieces {
+                borders.push(reservoir_border(state, topology, measured, &forces, tension, piece.index));
+            }
             true
         }
         _ => false,
@@ -153,8 +162,12 @@ pub fn solve(
         }
         weights.push(patch);
     }
-    if parameters.loads.is_empty() && topology.is_closed() && parameters.friction == 0.0 {
-        remove_rigid_load(state, measured, &mut push);
+    if parameters.loads.is_empty() && parameters.friction == 0.0 {
+        remove_rigid_load(topology, state, measured, &mut push);
+    }
+    // Pieces may push each other away.
+    for (f, g) in push.iter_mut().zip(&forces.repulsion) {
+        *f -= g;
     }
     let mut y = vec![0.0; 4 * n];
     for i in 0..n {
@@ -175,12 +188,18 @@ pub fn solve(
     let velocity: Vec<Vec3> = (0..n).map(|i| freedom[i].expand(&y[4 * i..4 * i + 3])).collect();
     let tension: Vec<f64> = (0..n).map(|i| y[4 * i + 3]).collect();
     let mut next = scalars.iter();
-    let pressure = if has_volume {
-        next.next().copied().unwrap_or(0.0)
-    } else {
-        offered_pressure(&parameters.volume, geometry.volume).unwrap_or(0.0)
-    };
-    let exchange = if exchanging { next.next().copied().unwrap_or(0.0) } else { 0.0 };
+    let pressure = pieces
+        .iter()
+        .map(|piece| {
+            if has_volume {
+                next.next().copied().unwrap_or(0.0)
+            } else {
+                offered_pressure(&parameters.volume, piece.volume, piece.share).unwrap_or(0.0)
+            }
+        })
+        .collect();
+    let exchange =
+        if exchanging { pieces.iter().map(|_| next.next().copied().unwrap_or(0.0)).collect() } else { Vec::new() };
     let mut load_forces = Vec::new();
     for load in &parameters.loads {
         load_forces.push(match &load.pull {
@@ -197,17 +216,15 @@ pub fn solve(
     let viscous = boussinesq_rate(state, measured, &velocity, deviatoric);
     let drag = surroundings.dissipation(geometry, &velocity);
     let stiff = implicit_work(connectivity, &forces, geometry, &velocity, step);
-    let volume_rate: f64 = geometry
-        .volume_gradient
-        .iter()
-        .zip(&velocity)
-        .map(|(g, v)| g.dot(v))
-        .sum();
+    let mut volume_rate = vec![0.0; pieces.len()];
+    for ((g, v), piece) in geometry.volume_gradient.iter().zip(&velocity).zip(&topology.piece) {
+        volume_rate[*piece as usize] += g.dot(v);
+    }
     let permeation = match &parameters.volume {
         VolumeCondition::Osmotic {
             permeability: Some(permeability),
             ..
-        } => volume_rate * volume_rate / (permeability * geometry.total_area),
+        } => volume_rate.iter().zip(&pieces).map(|(rate, piece)| rate * rate / (permeability * piece.area)).sum(),
         _ => 0.0,
     };
     Ok(Motion {
@@ -275,7 +292,9 @@ fn implicit_work(
             geometry.area[t] * (s.along * slope.norm_squared() + (s.across - s.along) * across * across)
         })
         .sum();
-    0.5 * step * step * (bending + stress)
+    let repulsion: f64 =
+        forces.repulsion_stiffness.iter().zip(velocity).map(|(stiff, v)| v.dot(&(stiff * v))).sum();
+    0.5 * step * step * (bending + stress + repulsion)
 }
 
 fn add_rim_traction(

@@ -2,6 +2,7 @@
 
 use super::advance::Simulation;
 use super::connectivity::Connectivity;
+use super::touching::Clearance;
 use crate::{Parameters, PhysicsError, State};
 use pellicle_surface::Vec3;
 use serde::{Deserialize, Serialize};
@@ -18,6 +19,8 @@ pub struct Memory {
     pub chemical_potential: Vec<f64>,
     /// Positions of the vertices when the present connectivity was analysed.
     pub ordered_at: Vec<Vec3>,
+    /// How far the surface is known to be from touching itself.
+    pub clearance: Clearance,
 }
 
 impl Simulation {
@@ -28,6 +31,7 @@ impl Simulation {
             wanted_edge: self.wanted_edge.clone(),
             chemical_potential: self.chemical_potential.clone(),
             ordered_at: self.connectivity.ordered_at.clone(),
+            clearance: self.clearance,
         }
     }
 
@@ -60,6 +64,7 @@ impl Simulation {
         simulation.mesh_velocity = memory.mesh_velocity;
         simulation.wanted_edge = memory.wanted_edge;
         simulation.chemical_potential = memory.chemical_potential;
+        simulation.clearance = memory.clearance;
         Ok(simulation)
     }
 }

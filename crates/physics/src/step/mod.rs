@@ -13,3 +13,6 @@ pub mod memory;
 pub mod mesh_care;
 pub mod pattern;
 pub mod rezone;
+mod settling;
+pub mod severing;
+pub mod touching;
