@@ -26,7 +26,7 @@ pub const UNFINISHED_FILE: &str = "checkpoint.unfinished";
 
 const MAGIC: [u8; 8] = *b"PELLICKP";
 /// Counts up with every change of what a checkpoint holds.
-const FORMAT: u32 = 1;
+const FORMAT: u32 = 2;
 const HEADER: usize = 8 + 4 + 4 + 4 + 32;
 /// Most bytes, packed or unpacked: enough for 400,000 vertices (about 230 bytes each). Whatever such a file says, reading
 /// it takes less than 1 GB: small numbers grow to at most four times their size in memory, lists by doubling.
@@ -158,7 +158,8 @@ impl Checkpoint {
             && optional(state.composition_amount.len())
             && optional(state.bound_amount.len())
             && optional(state.marker_amount.len())
-            && optional(state.rim_normals.len()))
+            && optional(state.rim_normals.len())
+            && state.pieces.len() <= n)
         {
             return Some("its fields do not belong to its surface");
         }
@@ -176,6 +177,7 @@ impl Checkpoint {
             || !self.memory.ordered_at.iter().all(finite)
             || !state.lipid.iter().all(|m| positive(*m))
             || !state.mesh.period.is_none_or(positive)
+            || !state.pieces.iter().all(|piece| piece.share.is_finite() && piece.pressure.is_finite())
         {
             return Some("its numbers are not finite");
         }

@@ -99,7 +99,7 @@ fn another_format_is_named() {
     let mut file = sample_file().to_vec();
     file[8] += 1;
     let message = Checkpoint::decode(&file).expect_err("another format").to_string();
-    assert!(message.contains("format is 2"), "{message}");
+    assert!(message.contains("format is 3"), "{message}");
 }
 
 /// One change to some bytes.

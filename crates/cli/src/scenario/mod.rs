@@ -12,6 +12,7 @@ mod physics;
 mod problem;
 mod read;
 mod schema;
+mod shape_changes;
 mod source;
 mod surface;
 #[cfg(test)]
@@ -20,6 +21,7 @@ mod values;
 
 pub use problem::ScenarioError;
 pub use schema::schema;
+pub use shape_changes::THINNEST_NECK;
 
 use crate::setup::{Cadence, Setup, StopRules};
 use crate::units::measure as m;
@@ -187,7 +189,7 @@ fn fill_from_list(values: &mut Values, keys: &'static [Key], prefix: &str) {
             Kind::Section(inner) => {
                 let optional = matches!(
                     path.as_str(),
-                    "composition" | "composition.domain" | "protein" | "protein.spot" | "frame"
+                    "composition" | "composition.domain" | "protein" | "protein.spot" | "frame" | "fission"
                 );
                 if !optional || values.has_section(&path) {
                     fill_from_list(values, inner, &format!("{path}."));

@@ -104,7 +104,6 @@ impl Simulation {
 
     /// A better mesh, if there is something to do.
     fn propose(&mut self, care: &MeshCare, most_vertices: usize) -> Result<Option<Proposal>, PhysicsError> {
-        let data = || self.vertex_data();
         if care.adapt && self.state.ledger.accepted % SIZING_EVERY == 0 {
             let target = self.wanted_sizes(care)?;
             let unfit = self.unfit(&target);
@@ -117,7 +116,7 @@ impl Simulation {
                     max_vertices: most_vertices,
                     ..RemeshOptions::default()
                 };
-                let outcome = remesh(&self.state.mesh, &data(), &target, &options)?;
+                let outcome = remesh(&self.state.mesh, &self.vertex_data(), &target, &options)?;
                 if outcome.changed() {
                     return Ok(Some(Proposal {
                         counts: [outcome.flips, outcome.splits, outcome.collapses],
@@ -129,7 +128,7 @@ impl Simulation {
                 }
             }
         }
-        let outcome = flip_to_delaunay_with(&self.state.mesh, &data(), FLIP_TOLERANCE)?;
+        let outcome = flip_to_delaunay_with(&self.state.mesh, &self.vertex_data(), FLIP_TOLERANCE)?;
         Ok((outcome.flips > 0).then(|| Proposal {
             counts: [outcome.flips, 0, 0],
             mesh: outcome.mesh,

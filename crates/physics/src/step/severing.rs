@@ -167,7 +167,7 @@ impl Simulation {
                     return Piece { share, ..whole };
                 }
                 let id = state.next_piece;
-                state.next_piece += 1;
+                state.next_piece = state.next_piece.saturating_add(1);
                 shed = Some(id);
                 Piece { id, parent: Some(whole.id), share, pressure: whole.pressure }
             })
