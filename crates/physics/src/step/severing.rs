@@ -19,6 +19,8 @@ use pellicle_surface::{Topology, Vec3};
 const LOOK_EVERY: u64 = 4;
 /// Most necks severed at a time.
 const MOST_AT_ONCE: usize = 8;
+/// Rounds of care of the mesh after a severing.
+const TIDY_ROUNDS: usize = 4;
 /// Share of the step before that the first one afterwards has.
 const SLOWER: f64 = 0.01;
 
@@ -55,7 +57,10 @@ impl Simulation {
                 }
             }
             match done {
-                Some(one) => severed.push(one),
+                Some(mut one) => {
+                    one.energy_change += self.tidy()?;
+                    severed.push(one);
+                }
                 None => break,
             }
         }
@@ -64,6 +69,23 @@ impl Simulation {
             self.clearance = Clearance::default();
         }
         Ok(severed)
+    }
+
+    /// Look after the mesh of fresh ends at once: what that changes in energy belongs to the severing.
+    fn tidy(&mut self) -> Result<f64, PhysicsError> {
+        let (start, before) = (self.energies.total(), self.state.ledger);
+        for _ in 0..TIDY_ROUNDS {
+            let care = self.care(f64::INFINITY)?;
+            if care.flips + care.splits + care.collapses == 0 {
+                break;
+            }
+        }
+        let change = self.energies.total() - start;
+        let ledger = &mut self.state.ledger;
+        ledger.severing += change;
+        (ledger.mesh_energy, ledger.mesh_debt, ledger.mesh_credit) =
+            (before.mesh_energy, before.mesh_debt, before.mesh_credit);
+        Ok(change)
     }
 
     /// Sever a neck of the present surface. `None` when the mesh does not allow it (yet).
