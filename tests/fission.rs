@@ -3,7 +3,7 @@
 mod common;
 
 use common::{Fallible, Place, assert_code, summary};
-use pellicle_physics::parameters::{AreaCondition, Blend, Fission, MeshCare, Phases, VolumeCondition};
+use pellicle_physics::parameters::{Blend, Fission, MeshCare, Phases, VolumeCondition};
 use pellicle_physics::{Parameters, Simulation, State};
 use pellicle_surface::geometry::Geometry;
 use pellicle_surface::mesh::shapes::{capped_tube, tube};
@@ -130,12 +130,10 @@ fn each_piece_keeps_its_lipids_and_its_volume() -> Fallible {
     Ok(())
 }
 
-/// A closed surface that draws lipid everywhere, and a tube: severed once it is closed, in one piece.
+/// A periodic tube severed once is closed in space, in one piece.
 #[test]
-fn reservoirs_and_tubes() -> Fallible {
+fn a_severed_tube_is_one_closed_piece() -> Fallible {
     let mut p = parameters();
-    p.area = AreaCondition::Reservoir(0.5);
-    p.volume = VolumeCondition::Fixed(vec![(0.0, 0.0)]);
     let mesh = waist(tube(1.0, 6.0, EDGE)?, 3.0)?;
     p.volume = VolumeCondition::Fixed(vec![(0.0, Geometry::new(&mesh).volume)]);
     let mut simulation = start(p, mesh)?;

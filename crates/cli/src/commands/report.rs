@@ -17,7 +17,7 @@ use std::fs;
 /// A plot: title, unit, and its columns with their factors and names.
 type Plan = (&'static str, &'static str, &'static [(&'static str, f64, &'static str)]);
 
-const PLOTS: [Plan; 13] = [
+const PLOTS: [Plan; 14] = [
     ("Free energy", "aJ", &[("free_energy_J", 1e18, "free energy")]),
     (
         "Energies",
@@ -28,6 +28,7 @@ const PLOTS: [Plan; 13] = [
             ("protein_energy_J", 1e18, "protein"),
             ("stretching_energy_J", 1e18, "stretching"),
             ("gaussian_energy_J", 1e18, "Gaussian"),
+            ("repulsion_energy_J", 1e18, "repulsion"),
         ],
     ),
     (
@@ -37,6 +38,7 @@ const PLOTS: [Plan; 13] = [
             ("dissipated_J", 1e18, "dissipated"),
             ("external_work_J", 1e18, "work of loads and reservoirs"),
             ("mesh_energy_J", 1e18, "by changes of the mesh"),
+            ("severing_energy_J", 1e18, "by severed necks"),
         ],
     ),
     ("Energy balance error", "", &[("energy_balance_error", 1.0, "balance error")]),
@@ -52,6 +54,7 @@ const PLOTS: [Plan; 13] = [
             ("tension_max_N_per_m", 1e3, "largest"),
         ],
     ),
+    ("Pieces", "", &[("piece_count", 1.0, "pieces")]),
     ("Domains", "", &[("domain_count", 1.0, "domains")]),
     ("Length of boundaries", "µm", &[("interface_length_m", 1e6, "length")]),
     ("Mean coverage", "", &[("coverage_mean", 1.0, "coverage")]),
