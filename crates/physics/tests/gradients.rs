@@ -171,17 +171,17 @@ fn repulsion_force_is_the_exact_gradient() {
         both
     };
     let ball = |n, seed| shapes::irregular_ellipsoid([1.0, 1.0, 0.9], n, seed).expect("ball");
-    let mut seam = shapes::irregular_ellipsoid([0.8, 0.8, 1.0], 200, 3).expect("body");
+    let mut seam = shapes::irregular_ellipsoid([0.8, 0.8, 1.0], 140, 3).expect("body");
     seam.period = Some(2.3);
-    let mut flat = ball(300, 4);
+    let mut flat = ball(160, 4);
     flat.positions.iter_mut().for_each(|x| x.z *= 0.15);
     for (name, mesh) in [
-        ("two bodies", joined(&ball(200, 1), &ball(240, 2), Vec3::new(0.3, 0.2, 1.95))),
+        ("two bodies", joined(&ball(120, 1), &ball(140, 2), Vec3::new(0.3, 0.2, 1.95))),
         ("thin body", flat),
         ("across the period", seam),
     ] {
         let topology = Topology::new(mesh.n_vertices(), &mesh.triangles).expect("manifold");
-        let law = Repulsion { pressure: 7.0, decay_length: 0.1 };
+        let law = Repulsion { pressure: 7.0, decay_length: 0.04 };
         let reach = repulsion::REACH * law.decay_length;
         let reach = mesh.period.map_or(reach, |period| reach.min(0.4 * period));
         let contacts = |m: &Mesh| facing(m, &topology, &Geometry::new(m), reach);
