@@ -9,9 +9,9 @@ use std::path::Path;
 
 /// The columns that others rely on.
 const COLUMNS: &str = "time_s,step_s,free_energy_J,bending_energy_J,gaussian_energy_J,phase_energy_J,\
-protein_energy_J,stretching_energy_J,external_work_J,dissipated_J,mesh_energy_J,energy_balance_error,area_m2,\
+protein_energy_J,stretching_energy_J,repulsion_energy_J,external_work_J,dissipated_J,mesh_energy_J,severing_energy_J,energy_balance_error,area_m2,\
 volume_m3,reduced_volume,pressure_Pa,tension_mean_N_per_m,tension_min_N_per_m,tension_max_N_per_m,\
-speed_max_m_per_s,composition_mean,composition_total_m2,domain_count,interface_length_m,coverage_mean,\
+speed_max_m_per_s,composition_mean,composition_total_m2,piece_count,domain_count,interface_length_m,coverage_mean,\
 bound_area_m2,neck_radius_m,load_force_N,load_extension_m,foppl_von_karman,scriven_love,vertex_count,quality_min,\
 edge_length_mean_m";
 

@@ -114,6 +114,9 @@ fn keys_that_do_not_go_together() {
     faulty("edge_too_long", &format!("[surface]\nshape = \"sphere\"\nradius = \"1 um\"\nedge_length = \"10 um\"\n{MEMBRANE}{TIME}"));
     faulty("surface_of_astronomical_size", &format!("[surface]\nshape = \"sphere\"\nradius = \"1e6 m\"\n{MEMBRANE}{TIME}"));
     faulty("reservoir_without_tension", &with("[lipids]\ncondition = \"reservoir\"\n"));
+    faulty("repulsion_without_pressure", &with("[self_contact]\nresponse = \"repel\"\ndecay_length = \"10 nm\"\n"));
+    faulty("repulsion_without_response", &with("[self_contact]\npressure = \"1 kPa\"\n"));
+    faulty("fission_and_stop_at_neck", &with("[fission]\nneck_radius = \"50 nm\"\n[stop]\nneck_radius = \"0.1 um\"\n"));
     faulty("volume_and_pressure", &with("[volume]\ncondition = \"fixed\"\nreduced_volume = 0.8\nramp = \"1 s\"\npressure = \"1 Pa\"\n"));
     faulty("volume_without_ramp", &with("[volume]\nreduced_volume = 0.8\n"));
     faulty("volume_beyond_sphere", &with("[volume]\ntarget = \"900 um^3\"\nramp = \"1 s\"\n"));

@@ -1,7 +1,7 @@
 //! Errors of the physics.
 
 use pellicle_sparse::SparseError;
-use pellicle_surface::MeshError;
+use pellicle_surface::{MeshError, Vec3};
 use thiserror::Error;
 
 /// What can go wrong while setting up or stepping.
@@ -37,6 +37,14 @@ pub enum PhysicsError {
     /// The linear solver failed.
     #[error("linear system: {0}")]
     Solver(#[from] SparseError),
+    /// The membrane passes through itself, and no law says what happens there.
+    #[error("the membrane touches itself at time {time}, near {place:?}")]
+    SelfContact {
+        /// Time.
+        time: f64,
+        /// Where.
+        place: Vec3,
+    },
     /// The step size fell to its floor.
     #[error("the time step fell to {step:e}, below the floor {floor:e}, at time {time}: {reason}")]
     StepFloor {

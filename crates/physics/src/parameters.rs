@@ -120,6 +120,32 @@ pub struct Protein {
     pub region: BindingRegion,
 }
 
+/// Repulsion of facing membranes, see [`crate::energy::repulsion`].
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Repulsion {
+    /// Pressure P₀ at contact [energy/volume].
+    pub pressure: f64,
+    /// Length λ over which it decays.
+    pub decay_length: f64,
+}
+
+/// What happens where the membrane meets itself.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub enum SelfContact {
+    /// The run stops.
+    #[default]
+    Stop,
+    /// The parts repel each other.
+    Repel(Repulsion),
+}
+
+/// Severing of thin necks.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Fission {
+    /// Necks of at most this radius (length round/2π) are severed.
+    pub neck_radius: f64,
+}
+
 /// How the rim of a framed patch is held.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
 pub enum Rim {
@@ -214,6 +240,10 @@ pub struct Parameters {
     pub rim: Option<Rim>,
     /// Loads.
     pub loads: Vec<Load>,
+    /// What happens where the membrane meets itself.
+    pub self_contact: SelfContact,
+    /// Whether necks are severed; `None`: they are not.
+    pub fission: Option<Fission>,
     /// Step control.
     pub step: StepControl,
     /// Mesh care; `None`: the connectivity never changes.
@@ -236,6 +266,8 @@ impl Parameters {
             protein: None,
             rim: None,
             loads: Vec::new(),
+            self_contact: SelfContact::Stop,
+            fission: None,
             step: StepControl {
                 tolerance: 0.03,
                 first: 1e-4,
@@ -310,6 +342,17 @@ impl Parameters {
                 if !(value > 0.0 && value.is_finite()) {
                     return refuse(name, value, "it must be finite and positive");
                 }
+            }
+        }
+        let mut lengths = Vec::new();
+        if let SelfContact::Repel(repulsion) = &self.self_contact {
+            lengths.push(("repulsion pressure", repulsion.pressure));
+            lengths.push(("repulsion decay_length", repulsion.decay_length));
+        }
+        lengths.extend(self.fission.map(|fission| ("fission neck_radius", fission.neck_radius)));
+        for (name, value) in lengths {
+            if !(value > 0.0 && value.is_finite()) {
+                return refuse(name, value, "it must be finite and positive");
             }
         }
         for load in &self.loads {

@@ -19,6 +19,19 @@ pub struct LoadState {
     pub force: Vec3,
 }
 
+/// A connected piece of the membrane.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Piece {
+    /// Name that it keeps for life.
+    pub id: u32,
+    /// Name of the piece that it was shed by; `None` for those of the start.
+    pub parent: Option<u32>,
+    /// Its share of a given volume, and of what is dissolved inside.
+    pub share: f64,
+    /// Pressure difference inside − outside.
+    pub pressure: f64,
+}
+
 /// Cumulated bookkeeping since the start.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct Ledger {
@@ -30,6 +43,8 @@ pub struct Ledger {
     pub work: f64,
     /// Energy changed by mesh motion, remapping and remeshing.
     pub mesh_energy: f64,
+    /// Jumps of the free energy where necks were severed.
+    pub severing: f64,
     /// Part of `mesh_energy` that the membrane has yet to give back by smoothing out the roughness of a changed mesh.
     pub mesh_debt: f64,
     /// Energy that care of the mesh may spend because loads have done work since it last did.
@@ -63,8 +78,12 @@ pub struct State {
     pub marker_amount: Vec<f64>,
     /// Tension conjugate to the lipid constraint of each vertex (see [`crate::energy::interface`]).
     pub tension: Vec<f64>,
-    /// Pressure difference inside − outside.
+    /// Pressure difference inside − outside; of several pieces, the mean weighted with their shares of the volume.
     pub pressure: f64,
+    /// Connected pieces, in the order of [`Topology::piece`].
+    pub pieces: Vec<Piece>,
+    /// Name of the next piece to be shed.
+    pub next_piece: u32,
     /// Material velocity of each vertex.
     pub velocity: Vec<Vec3>,
     /// Prescribed normals of clamped rim vertices (zero elsewhere); empty without a rim.
@@ -150,6 +169,8 @@ impl State {
             marker_amount: times(marker),
             tension: vec![start_tension; n],
             pressure: 0.0,
+            next_piece: topology.n_pieces as u32,
+            pieces: first_pieces(&mesh, &topology, &geometry),
             velocity: vec![Vec3::zeros(); n],
             rim_normals,
             loads,
@@ -157,6 +178,23 @@ impl State {
             lipid,
             mesh,
         })
+    }
+
+    /// Note the pressure of each piece.
+    ///
+    /// # Shapes
+    /// One entry per piece.
+    pub fn set_pressures(&mut self, pressures: &[f64]) {
+        for (piece, pressure) in self.pieces.iter_mut().zip(pressures) {
+            piece.pressure = *pressure;
+        }
+        self.pressure = match self.pieces.as_slice() {
+            [piece] => piece.pressure,
+            pieces => {
+                let shares: f64 = pieces.iter().map(|piece| piece.share).sum();
+                pieces.iter().map(|piece| piece.share * piece.pressure).sum::<f64>() / shares
+            }
+        };
     }
 
     /// Composition φ of each vertex; empty without phases.
@@ -173,6 +211,18 @@ impl State {
     pub fn marker(&self) -> Vec<f64> {
         ratio(&self.marker_amount, &self.lipid)
     }
+}
+
+/// The pieces of a surface at the start.
+fn first_pieces(mesh: &Mesh, topology: &Topology, geometry: &Geometry) -> Vec<Piece> {
+    let volumes = geometry.piece_volumes(mesh, topology);
+    let total: f64 = volumes.iter().sum();
+    let share = |volume: f64| if volumes.len() == 1 { 1.0 } else { volume / total };
+    volumes
+        .iter()
+        .zip(0..)
+        .map(|(volume, id)| Piece { id, parent: None, share: share(*volume), pressure: 0.0 })
+        .collect()
 }
 
 /// Area-weighted normals of the rim's triangles, kept as the clamp's normals.

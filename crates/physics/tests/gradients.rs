@@ -4,8 +4,9 @@
 //! is 1e-6 of the largest component. A wrong sign or a missing term is an error of order one.
 
 use pellicle_physics::coupling::MaterialFields;
-use pellicle_physics::energy::{bending, gaussian, interface, stretching};
-use pellicle_physics::parameters::{Blend, Parameters, Phases};
+use pellicle_physics::energy::{bending, gaussian, interface, repulsion, stretching};
+use pellicle_physics::parameters::{Blend, Parameters, Phases, Repulsion};
+use pellicle_surface::contact::facing;
 use pellicle_surface::geometry::{Curvature, CurvatureGradient, Geometry, RimCondition, Stencils};
 use pellicle_surface::mesh::shapes;
 use pellicle_surface::{Mesh, Topology, Vec3};
@@ -160,6 +161,46 @@ fn interface_force_is_the_exact_gradient() {
         let error = worst(&mesh, &|_| false, &gradient, &energy);
         println!("interface, {name}: {error:.1e}");
         assert!(error < BOUND, "{name}: {error:e}");
+    }
+}
+
+/// Two facing bodies, a thin body whose walls face each other, and a tube that faces its image across the period.
+#[test]
+fn repulsion_force_is_the_exact_gradient() {
+    let joined = |one: &Mesh, other: &Mesh, shift: Vec3| {
+        let offset = one.n_vertices() as u32;
+        let mut both = one.clone();
+        both.positions.extend(other.positions.iter().map(|x| x + shift));
+        both.triangles.extend(other.triangles.iter().map(|t| t.map(|v| v + offset)));
+        both
+    };
+    let ball = |n, seed| shapes::irregular_ellipsoid([1.0, 1.0, 0.9], n, seed).expect("ball");
+    let mut seam = shapes::irregular_ellipsoid([0.8, 0.8, 1.0], 140, 3).expect("body");
+    seam.period = Some(2.3);
+    let mut flat = ball(160, 4);
+    flat.positions.iter_mut().for_each(|x| x.z *= 0.15);
+    for (name, mesh) in [
+        ("two bodies", joined(&ball(120, 1), &ball(140, 2), Vec3::new(0.3, 0.2, 1.95))),
+        ("thin body", flat),
+        ("across the period", seam),
+    ] {
+        let topology = Topology::new(mesh.n_vertices(), &mesh.triangles).expect("manifold");
+        let law = Repulsion { pressure: 7.0, decay_length: 0.04 };
+        let reach = repulsion::REACH * law.decay_length;
+        let reach = mesh.period.map_or(reach, |period| reach.min(0.4 * period));
+        let contacts = |m: &Mesh| facing(m, &topology, &Geometry::new(m), reach);
+        let energy = |m: &Mesh| repulsion::energy(&law, &Geometry::new(m).vertex_area, &contacts(m));
+        let found = contacts(&mesh);
+        assert!(found.len() > 20, "{name}: {} contacts", found.len());
+        let mut gradient = vec![Vec3::zeros(); mesh.n_vertices()];
+        repulsion::add_gradient(&law, &topology, &Geometry::new(&mesh), &found, &mut gradient);
+        let error = worst(&mesh, &|_| false, &gradient, &energy);
+        println!("repulsion, {name}: {error:.1e}");
+        assert!(error < BOUND, "{name}: {error:e}");
+        // Action and reaction.
+        let net = gradient.iter().fold(Vec3::zeros(), |sum, g| sum + g);
+        let size: f64 = gradient.iter().map(|g| g.norm()).sum();
+        assert!(net.norm() < 1e-12 * size, "{name}: a net force of {net:?}");
     }
 }
 

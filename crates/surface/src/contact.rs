@@ -3,6 +3,10 @@
 //! Boxes of triangles and points of vertices are kept in R-trees; a periodic tube's are repeated one period up and
 //! down.
 
+mod facing;
+
+pub use facing::{Facing, facing};
+
 use crate::{Mesh, Topology, Vec3};
 use rstar::primitives::GeomWithData;
 use rstar::{AABB, RTree, RTreeObject};

@@ -18,6 +18,7 @@ pub mod mesh;
 pub mod operators;
 pub mod mesh_motion;
 pub mod necks;
+pub mod pieces;
 pub mod remap;
 pub mod remesh;
 

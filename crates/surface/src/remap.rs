@@ -52,22 +52,34 @@ pub fn remap(
     let swept = swept_areas(before, after, topology);
     let Carried { lipid, mut amounts } = carried;
     let density: Vec<f64> = lipid.iter().zip(&geometry_before.vertex_area).map(|(m, a)| m / a).collect();
-    let total: f64 = lipid.iter().sum();
-    let mean = reservoir_density.unwrap_or(total / geometry_before.total_area);
+    // Pieces exchange nothing; only those with a rim reach the reservoir.
+    let piece = |i: usize| topology.piece[i] as usize;
+    let sums = |values: &dyn Fn(usize) -> f64| {
+        let mut sums = vec![0.0; topology.n_pieces];
+        (0..n).for_each(|i| sums[piece(i)] += values(i));
+        sums
+    };
+    let total = sums(&|i| lipid[i]);
+    let reservoir: Vec<Option<f64>> =
+        topology.closed_pieces().iter().map(|closed| reservoir_density.filter(|_| !closed)).collect();
+    let areas_before = geometry_before.piece_areas(topology);
+    let areas_after = geometry_after.piece_areas(topology);
+    let mean: Vec<f64> =
+        (0..topology.n_pieces).map(|p| reservoir[p].unwrap_or(total[p] / areas_before[p])).collect();
     let deviation_flux = swept.divergence(n, |e| {
         let (i, j) = swept.ends[e];
         let upwind = if swept.flux[e] > 0.0 { j } else { i } as usize;
-        swept.flux[e] * (density[upwind] - mean)
+        swept.flux[e] * (density[upwind] - mean[piece(upwind)])
     });
     let deviation: Vec<f64> = (0..n)
-        .map(|i| lipid[i] - mean * geometry_before.vertex_area[i] + deviation_flux[i])
+        .map(|i| lipid[i] - mean[piece(i)] * geometry_before.vertex_area[i] + deviation_flux[i])
         .collect();
-    let mean_after = match reservoir_density {
-        Some(density) => density,
-        None => (total - deviation.iter().sum::<f64>()) / geometry_after.total_area,
-    };
+    let deviations = sums(&|i| deviation[i]);
+    let mean_after: Vec<f64> = (0..topology.n_pieces)
+        .map(|p| reservoir[p].unwrap_or((total[p] - deviations[p]) / areas_after[p]))
+        .collect();
     let wanted: Vec<f64> = (0..n)
-        .map(|i| mean_after * geometry_after.vertex_area[i] + deviation[i])
+        .map(|i| mean_after[piece(i)] * geometry_after.vertex_area[i] + deviation[i])
         .collect();
     let mut mass = EdgeFluxes {
         flux: (0..swept.ends.len())
@@ -169,9 +181,19 @@ fn graph_potential(topology: &Topology, right: &[f64], grounded: &[bool]) -> Vec
     let valence = |i: usize| topology.neighbours.of(i).len() as f64;
     let mut x = vec![0.0; n];
     let mut residual: Vec<f64> = (0..n).map(|i| if grounded[i] { 0.0 } else { right[i] }).collect();
-    if !grounded.iter().any(|g| *g) {
-        let mean = residual.iter().sum::<f64>() / n as f64;
-        residual.iter_mut().for_each(|r| *r -= mean);
+    let pieces = topology.n_pieces;
+    let (mut free, mut sum, mut count) = (vec![true; pieces], vec![0.0; pieces], vec![0usize; pieces]);
+    for i in 0..n {
+        let p = topology.piece[i] as usize;
+        free[p] &= !grounded[i];
+        sum[p] += residual[i];
+        count[p] += 1;
+    }
+    for (i, r) in residual.iter_mut().enumerate() {
+        let p = topology.piece[i] as usize;
+        if free[p] {
+            *r -= sum[p] / count[p] as f64;
+        }
     }
     let mut direction: Vec<f64> = (0..n).map(|i| residual[i] / valence(i)).collect();
     let mut work = vec![0.0; n];

@@ -366,9 +366,14 @@ fn apply(bytes: &mut Vec<u8>, change: Change) {
     }
 }
 
+/// `PELLICLE_MUTATIONS` asks for a longer hunt.
+fn cases() -> u32 {
+    std::env::var("PELLICLE_MUTATIONS").ok().and_then(|text| text.parse().ok()).unwrap_or(5000)
+}
+
 proptest! {
     // Every case changes all six good files in the same way: 5000 or more for each reader.
-    #![proptest_config(ProptestConfig::with_cases(5000))]
+    #![proptest_config(ProptestConfig::with_cases(cases()))]
 
     /// Whatever happens to its bytes, each kind of file gives a mesh with valid indices and finite coordinates, or an
     /// error; never a panic that escapes, never memory beyond the size of the file.

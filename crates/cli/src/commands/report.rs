@@ -23,7 +23,7 @@ type Plan = (&'static str, Unit, &'static [(&'static str, &'static str)]);
 const ENERGY: Unit = Some(("J", 1));
 const TIME: Unit = Some(("s", 1));
 
-const PLOTS: [Plan; 13] = [
+const PLOTS: [Plan; 14] = [
     ("Free energy", ENERGY, &[("free_energy_J", "free energy")]),
     (
         "Energies",
@@ -34,6 +34,7 @@ const PLOTS: [Plan; 13] = [
             ("protein_energy_J", "protein"),
             ("stretching_energy_J", "stretching"),
             ("gaussian_energy_J", "Gaussian"),
+            ("repulsion_energy_J", "repulsion"),
         ],
     ),
     (
@@ -43,6 +44,7 @@ const PLOTS: [Plan; 13] = [
             ("dissipated_J", "dissipated"),
             ("external_work_J", "work of loads and reservoirs"),
             ("mesh_energy_J", "by changes of the mesh"),
+            ("severing_energy_J", "by severed necks"),
         ],
     ),
     ("Energy balance error", None, &[("energy_balance_error", "balance error")]),
@@ -54,6 +56,7 @@ const PLOTS: [Plan; 13] = [
         Some(("N/m", 1)),
         &[("tension_mean_N_per_m", "mean"), ("tension_min_N_per_m", "least"), ("tension_max_N_per_m", "largest")],
     ),
+    ("Pieces", None, &[("piece_count", "pieces")]),
     ("Domains", None, &[("domain_count", "domains")]),
     ("Length of boundaries", Some(("m", 1)), &[("interface_length_m", "length")]),
     ("Mean coverage", None, &[("coverage_mean", "coverage")]),

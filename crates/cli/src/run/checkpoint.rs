@@ -158,7 +158,8 @@ impl Checkpoint {
             && optional(state.composition_amount.len())
             && optional(state.bound_amount.len())
             && optional(state.marker_amount.len())
-            && optional(state.rim_normals.len()))
+            && optional(state.rim_normals.len())
+            && state.pieces.len() <= n)
         {
             return Some("its fields do not belong to its surface");
         }
@@ -179,6 +180,7 @@ impl Checkpoint {
             })
             || !state.lipid.iter().all(|m| positive(*m))
             || !state.mesh.period.is_none_or(positive)
+            || !state.pieces.iter().all(|piece| piece.share.is_finite() && piece.pressure.is_finite())
         {
             return Some("its numbers are not finite");
         }

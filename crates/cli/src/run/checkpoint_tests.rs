@@ -100,7 +100,7 @@ fn another_format_is_named() {
     let mut file = sample_file().to_vec();
     file[8] += 1;
     let message = Checkpoint::decode(&file).expect_err("another format").to_string();
-    assert!(message.contains("format is 2"), "{message}");
+    assert!(message.contains("format is 3"), "{message}");
 }
 
 /// One change to some bytes.
@@ -142,8 +142,13 @@ fn apply(bytes: &mut Vec<u8>, damage: &Damage) {
     }
 }
 
+/// `PELLICLE_MUTATIONS` asks for a longer hunt.
+fn cases() -> u32 {
+    std::env::var("PELLICLE_MUTATIONS").ok().and_then(|text| text.parse().ok()).unwrap_or(2000)
+}
+
 proptest! {
-    #![proptest_config(ProptestConfig { cases: 2000, ..ProptestConfig::default() })]
+    #![proptest_config(ProptestConfig { cases: cases(), ..ProptestConfig::default() })]
 
     #[test]
     fn damaged_files_are_refused(damages in prop::collection::vec(damage(), 1..4)) {

@@ -4,11 +4,11 @@ use super::cursor::Cursor;
 use super::plan::Plan;
 use pellicle_physics::Simulation;
 use pellicle_physics::diagnostics::Diagnostics;
-use pellicle_physics::parameters::VolumeCondition;
+use pellicle_physics::parameters::{SelfContact, VolumeCondition};
 use serde_json::{Map, Number, Value};
 
 /// Names of the columns, in order.
-pub const COLUMNS: [&str; 34] = [
+pub const COLUMNS: [&str; 37] = [
     "time_s",
     "step_s",
     "free_energy_J",
@@ -17,9 +17,11 @@ pub const COLUMNS: [&str; 34] = [
     "phase_energy_J",
     "protein_energy_J",
     "stretching_energy_J",
+    "repulsion_energy_J",
     "external_work_J",
     "dissipated_J",
     "mesh_energy_J",
+    "severing_energy_J",
     "energy_balance_error",
     "area_m2",
     "volume_m3",
@@ -31,6 +33,7 @@ pub const COLUMNS: [&str; 34] = [
     "speed_max_m_per_s",
     "composition_mean",
     "composition_total_m2",
+    "piece_count",
     "domain_count",
     "interface_length_m",
     "coverage_mean",
@@ -75,9 +78,11 @@ impl Row {
             parameters.phases.map(|_| energies.phase * energy),
             parameters.protein.map(|_| energies.protein * energy),
             Some(energies.stretching * energy),
+            matches!(parameters.self_contact, SelfContact::Repel(_)).then_some(energies.repulsion * energy),
             driven.then_some(ledger.work * energy),
             Some(ledger.dissipated * energy),
             Some(ledger.mesh_energy * energy),
+            parameters.fission.map(|_| ledger.severing * energy),
             Some(simulation.energy_balance_error()),
             Some(seen.area * area),
             seen.volume.map(|v| v * area * length),
@@ -89,6 +94,7 @@ impl Row {
             moved.then_some(seen.speed_max * length / time),
             seen.composition_mean,
             seen.composition_total.map(|a| a * area),
+            Some(count(seen.pieces.len())),
             seen.domain_count.map(count),
             seen.interface_length.map(|l| l * length),
             seen.coverage_mean,

@@ -2,6 +2,8 @@
 
 use super::plan::Plan;
 use super::reasons::Reasons;
+use super::words::with_unit;
+use crate::scenario::THINNEST_NECK;
 use crate::setup::{Cadence, StopRules};
 use serde::{Deserialize, Serialize};
 
@@ -20,6 +22,8 @@ pub struct Cursor {
     pub rows: u64,
     /// Bytes of the series.
     pub series_bytes: u64,
+    /// Bytes of the table of pieces; 0 without one.
+    pub pieces_bytes: u64,
     /// Frames written.
     pub frames: u64,
     /// Number of the next row time, in units of the cadence.
@@ -59,6 +63,8 @@ pub enum Ended {
     Neck(f64),
     /// No more domains than asked for are left.
     Domains(u64),
+    /// The membrane passed through itself at a place (solver units).
+    SelfContact([f64; 3]),
     /// Nothing moves any more.
     Rest,
     /// The solver gave up, in words.
@@ -181,11 +187,25 @@ impl Ended {
         match self {
             Self::Time => format!(
                 "the simulated time of {} was reached",
-                super::words::with_unit(plan.stop.time * scales.time, "s")
+                with_unit(plan.stop.time * scales.time, "s")
             ),
-            Self::Neck(radius) => format!(
-                "a neck narrowed to a radius of {}",
-                super::words::with_unit(radius * scales.length, "m")
+            Self::Neck(radius) => {
+                let narrowed =
+                    format!("a neck narrowed to a radius of {}", with_unit(radius * scales.length, "m"));
+                let shortest = plan.parameters.mesh.map_or(0.0, |care| care.shortest);
+                // Half as much again: the neck may have been above its limit a step ago.
+                if radius * scales.length > 1.5 * THINNEST_NECK.max(2.0 * shortest * scales.length) {
+                    return narrowed;
+                }
+                format!(
+                    "{narrowed}: at so few nanometres or edges the model cannot say whether it opens, stays or parts; \
+                     a section [fission] severs it and goes on"
+                )
+            }
+            Self::SelfContact(place) => format!(
+                "the membrane touches itself near ({} um): what happens where two bilayers meet (adhesion, fusion, \
+                 rupture) is not in the model; [self_contact] response = \"repel\" keeps them apart",
+                place.map(|x| format!("{:.3}", x * scales.length * 1e6)).join(", ")
             ),
             Self::Domains(count) => format!("the number of domains fell to {count}"),
             Self::Rest => "the membrane came to rest".to_owned(),
@@ -199,6 +219,7 @@ impl Ended {
             Self::Time => "time",
             Self::Neck(_) => "neck_radius",
             Self::Domains(_) => "domain_count",
+            Self::SelfContact(_) => "self_contact",
             Self::Rest => "at_rest",
             Self::Trouble(_) => "trouble",
         }

@@ -18,6 +18,9 @@ use pellicle_physics::{PhysicsError, Simulation, StepReport};
 use std::path::PathBuf;
 use std::time::Instant;
 
+/// Accepted steps between looks for necks that end the run: finding them is a good part of a step.
+const NECK_LOOK_EVERY: u64 = 4;
+
 /// A run at work.
 pub struct Driver {
     /// Directory of the results.
@@ -32,6 +35,8 @@ pub struct Driver {
     pub accounts: Accounts,
     /// Rows.
     pub series: SeriesFile,
+    /// Rows for each piece, where necks are severed.
+    pub pieces: Option<SeriesFile>,
     /// Frames.
     pub frames: FrameWriter,
     /// Log.
@@ -129,7 +134,10 @@ impl Driver {
             let report = match self.simulation.advance(longest_step(state.time, wanted, event)) {
                 Ok(report) => report,
                 Err(error) => {
-                    self.cursor.ended = Some(Ended::Trouble(self.trouble(&error)));
+                    self.cursor.ended = Some(match error {
+                        PhysicsError::SelfContact { place, .. } => Ended::SelfContact(place.into()),
+                        error => Ended::Trouble(self.trouble(&error)),
+                    });
                     continue;
                 }
             };
@@ -138,13 +146,16 @@ impl Driver {
 
             let clock = Instant::now();
             let state = &self.simulation.state;
-            let by_look = stop.neck_radius.is_some() || stop.domain_count.is_some();
-            let writes = self.cursor.row_due(&cadence, state.time)
+            let severed = !report.severed.is_empty();
+            let by_look = (stop.neck_radius.is_some() && state.ledger.accepted % NECK_LOOK_EVERY == 0)
+                || stop.domain_count.is_some();
+            let writes = severed
+                || self.cursor.row_due(&cadence, state.time)
                 || self.cursor.frame_due(&cadence, state.time, report.free_energy, size(&self.simulation));
             let seen = (by_look || writes).then(|| Diagnostics::measure(&self.simulation));
             if let Some(seen) = &seen {
                 self.note_domains(seen);
-                self.write_due(seen, false)?;
+                self.write_due(seen, severed)?;
             }
             self.cursor.ended = self.reason_to_stop(seen.as_ref());
             self.show(&report, clocks.from);
@@ -167,6 +178,19 @@ impl Driver {
                 reason.words()
             ));
         }
+        for neck in &report.severed {
+            let scales = &self.plan.scales;
+            let shed = match neck.shed {
+                Some(piece) => format!("piece {piece} was shed"),
+                None => "the surface stays in one piece".to_owned(),
+            };
+            self.log.line(format_args!(
+                "a neck of radius {} was severed at {}: {shed}, the free energy changed by {:.4} kBT",
+                with_unit(neck.radius * scales.length, "m"),
+                with_unit(self.simulation.state.time * scales.time, "s"),
+                neck.energy_change * scales.energy / scales.thermal_energy,
+            ));
+        }
         self.cursor.bounded_by.add(report.bounded_by);
         self.cursor.stepped(report.step, report.free_energy, report.speed * report.step);
         if let Some(limit) = self.plan.stop.at_rest {
@@ -187,6 +211,10 @@ impl Driver {
         if self.cursor.row_due(&cadence, time) || (always && row_missing) {
             let row = Row::measure(&self.plan, &self.simulation, seen, &self.cursor);
             let bytes = self.series.push(&row)?;
+            if let Some(pieces) = &mut self.pieces {
+                pieces.push_pieces(&self.plan, time, &seen.pieces)?;
+                self.cursor.pieces_bytes = pieces.bytes();
+            }
             let bytes = if self.cursor.rows == 0 { self.series.bytes() } else { bytes };
             self.cursor.row_written(&cadence, time, bytes);
             self.log.line(format_args!(
@@ -261,6 +289,9 @@ impl Driver {
     fn checkpoint(&mut self, clocks: &mut Clocks) -> Result<Checkpoint, Failure> {
         let clock = Instant::now();
         self.series.sync()?;
+        if let Some(pieces) = &self.pieces {
+            pieces.sync()?;
+        }
         self.frames.flush()?;
         let total = clocks.start.elapsed().as_secs_f64();
         let accounts = self.accounts.with(&self.simulation.timings, total, clocks.output);

@@ -3,7 +3,7 @@
 use super::checkpoint::{CHECKPOINT_FILE, PREVIOUS_FILE, UNFINISHED_FILE};
 use super::frames::{COLLECTION_FILE, frame_files};
 use super::log::LOG_FILE;
-use super::series::SERIES_FILE;
+use super::series::{PIECES_FILE, SERIES_FILE};
 use super::summary::SUMMARY_FILE;
 use crate::failure::Failure;
 use std::fs;
@@ -15,7 +15,8 @@ pub const SCENARIO_FILE: &str = "scenario.toml";
 /// How the marked file begins.
 const MARK: &str = "# Scenario as run by pellicle ";
 /// The other files of a run, but for its frames, log and lock.
-const RESULTS: [&str; 5] = [SERIES_FILE, SUMMARY_FILE, COLLECTION_FILE, CHECKPOINT_FILE, PREVIOUS_FILE];
+const RESULTS: [&str; 6] =
+    [SERIES_FILE, PIECES_FILE, SUMMARY_FILE, COLLECTION_FILE, CHECKPOINT_FILE, PREVIOUS_FILE];
 
 /// `scenario.toml` as it is written into the directory.
 pub fn scenario_text(resolved: &str) -> String {

@@ -156,6 +156,11 @@ pub fn frame_of(plan: &Plan, simulation: &Simulation, index: u64) -> OwnedFrame 
             point_data.push(scalar(name, values, factor));
         }
     }
+    if simulation.parameters.fission.is_some() {
+        let (pieces, piece_of) = (&simulation.state.pieces, &simulation.connectivity.topology.piece);
+        let names = piece_of.iter().filter_map(|k| pieces.get(*k as usize)).map(|piece| f64::from(piece.id));
+        point_data.push(scalar("piece", names.collect(), 1.0));
+    }
     point_data.extend([
         scalar("tension [mN/m]", seen.tension, millitension),
         vector("velocity [um/s]", seen.velocity, speed),

@@ -8,7 +8,8 @@ use super::frames::FrameWriter;
 use super::lock::Lock;
 use super::log::Log;
 use super::progress::Progress;
-use super::series::SeriesFile;
+use super::columns::COLUMNS;
+use super::series::{PIECE_COLUMNS, PIECES_FILE, SERIES_FILE, SeriesFile};
 use super::signals::Interrupt;
 use super::summary::SUMMARY_FILE;
 use super::words::with_unit;
@@ -68,7 +69,11 @@ pub fn resume(
     let simulation = Simulation::restore(plan.parameters.clone(), state, memory)
         .map_err(|error| Failure::Files(format!("the checkpoint cannot be used: {error}")))?;
     let interrupt = Interrupt::watch().map_err(|error| Failure::Files(format!("cannot watch signals: {error}")))?;
-    let series = SeriesFile::open(folder, cursor.series_bytes)?;
+    let series = SeriesFile::open(folder, SERIES_FILE, &COLUMNS, cursor.series_bytes)?;
+    let pieces = match plan.parameters.fission {
+        Some(_) => Some(SeriesFile::open(folder, PIECES_FILE, &PIECE_COLUMNS, cursor.pieces_bytes)?),
+        None => None,
+    };
     folder::sweep(folder);
     let frames = FrameWriter::open(folder, cursor.frames)?;
     // It told of an end that is none any more; the new one is written at the end.
@@ -91,6 +96,7 @@ pub fn resume(
         cursor,
         accounts,
         series,
+        pieces,
         frames,
         log,
         progress,

@@ -1,7 +1,9 @@
 //! `series.csv`: one row per output time, whole rows only.
 
-use super::columns::{COLUMNS, Row};
+use super::columns::Row;
+use super::plan::Plan;
 use crate::failure::Failure;
+use pellicle_physics::diagnostics::PieceReading;
 use std::fs::{File, OpenOptions};
 use std::io::{Read, Seek, SeekFrom, Write};
 use std::path::{Path, PathBuf};
@@ -17,6 +19,26 @@ pub struct SeriesFile {
     bytes: u64,
 }
 
+/// Name of the table of pieces, beside the series where necks are severed.
+pub const PIECES_FILE: &str = "pieces.csv";
+/// Its columns.
+pub const PIECE_COLUMNS: [&str; 14] = [
+    "time_s",
+    "piece",
+    "parent",
+    "vertex_count",
+    "area_m2",
+    "volume_m3",
+    "reduced_volume",
+    "pressure_Pa",
+    "lipid_m2",
+    "composition_mean",
+    "coverage_mean",
+    "centre_x_m",
+    "centre_y_m",
+    "centre_z_m",
+];
+
 /// One record as RFC 4180 has it.
 fn record<I, T>(fields: I) -> Vec<u8>
 where
@@ -30,31 +52,31 @@ where
 }
 
 impl SeriesFile {
-    /// Start a series: an empty file with its header.
+    /// Start a table: an empty file with its header.
     ///
     /// # Errors
     /// [`Failure::Files`] when the file cannot be written.
-    pub fn create(folder: &Path) -> Result<Self, Failure> {
-        let path = folder.join(SERIES_FILE);
+    pub fn create(folder: &Path, name: &str, columns: &[&str]) -> Result<Self, Failure> {
+        let path = folder.join(name);
         let file = File::create(&path).map_err(|error| Failure::system("create", &path, &error))?;
         let mut series = Self { file, path, bytes: 0 };
-        series.append(&record(COLUMNS))?;
+        series.append(&record(columns))?;
         Ok(series)
     }
 
-    /// Open a series and cut it to the bytes that a checkpoint knows.
+    /// Open a table and cut it to the bytes that a checkpoint knows.
     ///
     /// # Errors
     /// [`Failure::Files`] when the file cannot be opened, or is not the one the checkpoint knows.
-    pub fn open(folder: &Path, bytes: u64) -> Result<Self, Failure> {
-        let path = folder.join(SERIES_FILE);
+    pub fn open(folder: &Path, name: &str, columns: &[&str], bytes: u64) -> Result<Self, Failure> {
+        let path = folder.join(name);
         let mut file = OpenOptions::new()
             .read(true)
             .write(true)
             .open(&path)
             .map_err(|error| Failure::system("open", &path, &error))?;
         let system = |error| Failure::system("read", &path, &error);
-        let header = record(COLUMNS);
+        let header = record(columns);
         let mut start = vec![0; header.len()];
         let length = file.metadata().map_err(system)?.len();
         let mut end = [0; 1];
@@ -88,6 +110,38 @@ impl SeriesFile {
         let record = record(row.cells());
         self.append(&record)?;
         Ok(record.len() as u64)
+    }
+
+    /// Write a line for each piece.
+    ///
+    /// # Errors
+    /// As [`SeriesFile::push`].
+    pub fn push_pieces(&mut self, plan: &Plan, time: f64, pieces: &[PieceReading]) -> Result<(), Failure> {
+        let scales = &plan.scales;
+        let (length, area) = (scales.length, scales.length * scales.length);
+        let number = |value: Option<f64>, unit: f64| value.map_or(String::new(), |value| format!("{:e}", value * unit));
+        let mut lines = Vec::new();
+        for piece in pieces {
+            let composition = number(piece.composition_mean, 1.0);
+            let centre = piece.centre * length;
+            lines.extend(record([
+                number(Some(time), scales.time),
+                piece.id.to_string(),
+                piece.parent.map_or(String::new(), |parent| parent.to_string()),
+                piece.vertex_count.to_string(),
+                number(Some(piece.area), area),
+                number(piece.volume, area * length),
+                number(piece.reduced_volume, 1.0),
+                number(piece.pressure, scales.energy / (area * length)),
+                number(Some(piece.lipid), area),
+                composition,
+                number(piece.coverage_mean, 1.0),
+                number(Some(centre.x), 1.0),
+                number(Some(centre.y), 1.0),
+                number(Some(centre.z), 1.0),
+            ]));
+        }
+        self.append(&lines)
     }
 
     fn append(&mut self, record: &[u8]) -> Result<(), Failure> {

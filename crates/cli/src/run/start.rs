@@ -9,7 +9,8 @@ use super::lock::Lock;
 use super::log::{self, Log};
 use super::plan::Plan;
 use super::progress::Progress;
-use super::series::SeriesFile;
+use super::columns::COLUMNS;
+use super::series::{PIECE_COLUMNS, PIECES_FILE, SERIES_FILE, SeriesFile};
 use super::signals::Interrupt;
 use super::summary::{self, Accounts};
 use crate::failure::Failure;
@@ -76,7 +77,11 @@ pub fn start(
     }
     Ok(Driver {
         folder: folder.to_owned(),
-        series: SeriesFile::create(folder)?,
+        series: SeriesFile::create(folder, SERIES_FILE, &COLUMNS)?,
+        pieces: match plan.parameters.fission {
+            Some(_) => Some(SeriesFile::create(folder, PIECES_FILE, &PIECE_COLUMNS)?),
+            None => None,
+        },
         frames: FrameWriter::create(folder)?,
         plan,
         simulation,

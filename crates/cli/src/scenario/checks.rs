@@ -29,6 +29,7 @@ pub fn cross(values: &Values) -> Vec<Problem> {
     for (index, load) in values.list("load").iter().enumerate() {
         check.load(load, index);
     }
+    check.contact_and_fission();
     check.time();
     check.problems
 }
@@ -99,6 +100,24 @@ impl Check<'_> {
                 format!("{prefix}{first} and {prefix}{second} exclude each other"),
                 "one too many",
                 format!("remove {prefix}{first} or {prefix}{second}"),
+            );
+        }
+    }
+
+    fn contact_and_fission(&mut self) {
+        for path in ["self_contact.pressure", "self_contact.decay_length"] {
+            if self.values.text("self_contact.response") == "repel" {
+                self.require(path, ": the repulsion needs it");
+            } else {
+                self.idle(path, "unless self_contact.response = \"repel\"");
+            }
+        }
+        if self.values.has_section("fission") && self.values.given("stop.neck_radius") {
+            self.add(
+                self.values.place("stop.neck_radius"),
+                "stop.neck_radius ends the run at a thin neck, [fission] severs it and goes on".into(),
+                "one too many",
+                "remove stop.neck_radius or the section [fission]".into(),
             );
         }
     }

@@ -145,6 +145,8 @@ pub const ROOT: &[Key] = &[
     section("surroundings", SURROUNDINGS, "drag of what surrounds the membrane"),
     section("frame", FRAME, "how the rim of a patch is held"),
     key("load", Sections(LOAD), "", "force or trap that pulls on a small patch of membrane"),
+    section("self_contact", SELF_CONTACT, "what happens where the membrane meets itself"),
+    section("fission", FISSION, "thin necks are severed and the run goes on in pieces; left out: a thin neck ends the run"),
     section("time", TIME, "end of the run and limits of the time step"),
     section("mesh", MESH, "how the mesh is looked after during the run"),
     section("output", OUTPUT, "how often what is written"),
@@ -269,6 +271,16 @@ const PATH: &[Key] = &[
     key("force", Vector(m::FORCE), "[\"0 pN\", \"0 pN\", \"10 pN\"]", "force"),
 ];
 
+const SELF_CONTACT: &[Key] = &[
+    key("response", Choice(&["stop", "repel"]), "\"repel\"", "stop: the run ends; repel: facing parts keep apart by a pressure that decays with their distance").or("\"stop\""),
+    key("pressure", Quantity(m::PRESSURE, Positive), "\"1 kPa\"", "repel: pressure P in P exp(-distance/decay_length); between lipid bilayers in water about 0.1 to 1 GPa"),
+    key("decay_length", Quantity(m::LENGTH, Positive), "\"10 nm\"", "repel: length over which the pressure decays; between lipid bilayers in water 0.1 to 0.3 nm, on a mesh not less than the sag of its triangles"),
+];
+
+const FISSION: &[Key] = &[
+    key("neck_radius", Quantity(m::LENGTH, Positive), "\"20 nm\"", "necks of at most this radius are severed; left out: 5 nm or two mesh.shortest_edge, whichever is more"),
+];
+
 const TIME: &[Key] = &[
     key("end", Quantity(m::TIME, Positive), "\"10 s\"", "simulated time"),
     key("tolerance", Number(AboveUpTo(0.0, 0.5)), "0.03", "largest share by which the energy drop of a step may differ from what it dissipates").or("0.03"),
@@ -294,7 +306,7 @@ const OUTPUT: &[Key] = &[
 ];
 
 const STOP: &[Key] = &[
-    key("neck_radius", Quantity(m::LENGTH, Positive), "\"0.2 um\"", "end when the narrowest neck is below"),
+    key("neck_radius", Quantity(m::LENGTH, Positive), "\"0.2 um\"", "end when the narrowest neck is below; left out, without [fission]: 5 nm or two mesh.shortest_edge, whichever is more"),
     key("domain_count", Whole(1, 1_000_000), "1", "end when so few domains are left, once there were more"),
     key("at_rest", Number(AboveUpTo(0.0, 1.0)), "1e-3", "end when 100 x the energy that as long a time again would release / all energy released so far stays below").or("1e-3"),
 ];

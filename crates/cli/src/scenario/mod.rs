@@ -12,6 +12,7 @@ mod physics;
 pub mod problem;
 pub mod read;
 mod schema;
+mod shape_changes;
 pub mod source;
 mod start_state;
 mod surface;
@@ -21,6 +22,7 @@ pub mod values;
 
 pub use problem::ScenarioError;
 pub use schema::{schema, schema_of};
+pub use shape_changes::THINNEST_NECK;
 
 use crate::setup::{Cadence, Setup, StopRules};
 use crate::units::measure as m;
@@ -221,7 +223,7 @@ fn fill_from_list(values: &mut Values, keys: &'static [Key], prefix: &str) {
             Kind::Section(inner) => {
                 let optional = matches!(
                     path.as_str(),
-                    "composition" | "composition.domain" | "protein" | "protein.spot" | "frame"
+                    "composition" | "composition.domain" | "protein" | "protein.spot" | "frame" | "fission"
                 );
                 if !optional || values.has_section(&path) {
                     fill_from_list(values, inner, &format!("{path}."));

@@ -2,6 +2,7 @@
 
 use super::checks::is_framed;
 use super::problem::{Place, Problem};
+use super::shape_changes;
 use super::surface::{Surface, locate};
 use super::values::{Value, Values};
 use crate::setup::Scales;
@@ -167,6 +168,7 @@ pub fn fill_scaled(values: &mut Values, scales: &Scales, vertices: usize) {
         of(values, "surface.edge_length") / 8.0,
         "default: an eighth of surface.edge_length",
     );
+    shape_changes::fill(values);
     let budget = 20_000.max(2 * vertices).min(super::surface::MOST_VERTICES) as i64;
     values.fill_as(
         "mesh.most_vertices",
@@ -254,6 +256,8 @@ pub fn parameters(
             _ => Rim::Clamped,
         }),
         loads: loads(&s, surface)?,
+        self_contact: shape_changes::self_contact(values, &scales),
+        fission: shape_changes::fission(values, &scales),
         step: StepControl {
             tolerance: values.number("time.tolerance").unwrap_or(0.03),
             first: s.get("time.first_step", m::TIME),

@@ -417,8 +417,13 @@ fn apply(text: String, change: &Change) -> String {
     letters.into_iter().collect()
 }
 
+/// `PELLICLE_MUTATIONS` asks for a longer hunt.
+fn cases() -> u32 {
+    std::env::var("PELLICLE_MUTATIONS").ok().and_then(|text| text.parse().ok()).unwrap_or(1500)
+}
+
 proptest! {
-    #![proptest_config(ProptestConfig { cases: 1500, failure_persistence: None, ..ProptestConfig::default() })]
+    #![proptest_config(ProptestConfig { cases: cases(), failure_persistence: None, ..ProptestConfig::default() })]
 
     #[test]
     fn broken_examples_never_panic(which in any::<usize>(), changes in prop::collection::vec(change(), 1..6)) {

@@ -4,8 +4,10 @@
 
 pub mod domains;
 pub mod fields;
+pub mod pieces;
 
 pub use fields::{Fields, chemical_potential, fields};
+pub use pieces::{PieceReading, pieces};
 
 use crate::parameters::{Load, Pull, VolumeCondition};
 use crate::step::advance::Simulation;
@@ -32,8 +34,10 @@ pub struct Diagnostics {
     pub area: f64,
     /// Enclosed volume, of one period of a tube; `None` when the surface is open.
     pub volume: Option<f64>,
-    /// 6√π V/A^(3/2), 1 for a sphere; `None` unless the surface closes in space.
+    /// 6√π V/A^(3/2), 1 for a sphere, of the piece with the largest area; `None` unless that closes in space.
     pub reduced_volume: Option<f64>,
+    /// Every connected piece.
+    pub pieces: Vec<PieceReading>,
     /// Pressure inside − outside [energy/volume]. `None` on an open patch without a given pressure, and before
     /// the first step where it is the multiplier of a fixed volume.
     pub pressure: Option<f64>,
@@ -99,12 +103,15 @@ impl Diagnostics {
             (total(&state.composition_amount), total(&state.bound_amount));
         let composition_mean = composition_total.map(|n| n / lipid);
         let necks = necks::find(mesh, topology, geometry);
+        let pieces = pieces(simulation);
         Self {
             area,
             volume,
-            reduced_volume: volume
-                .filter(|_| mesh.period.is_none())
-                .map(|v| 6.0 * PI.sqrt() * v / area.powf(1.5)),
+            reduced_volume: pieces
+                .iter()
+                .reduce(|a, b| if b.area > a.area { b } else { a })
+                .and_then(|piece| piece.reduced_volume),
+            pieces,
             pressure: pressure(simulation),
             tension_mean,
             tension_min: tension.iter().copied().fold(f64::INFINITY, f64::min),

@@ -4,6 +4,7 @@ pub mod bending;
 pub mod gaussian;
 pub mod interface;
 pub mod protein;
+pub mod repulsion;
 pub mod reservoirs;
 pub mod stretching;
 pub mod total;

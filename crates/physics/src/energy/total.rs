@@ -1,11 +1,12 @@
 //! The free energy of a state, term by term.
 
 use super::interface::{GradientEnergy, InterfaceFields};
-use super::{bending, gaussian, interface, protein, reservoirs, stretching};
+use super::{bending, gaussian, interface, protein, repulsion, reservoirs, stretching};
 use crate::coupling::MaterialFields;
-use crate::parameters::{AreaCondition, Parameters, Rim};
+use crate::parameters::{AreaCondition, Parameters, Rim, SelfContact};
 use crate::state::State;
 use pellicle_surface::Topology;
+use pellicle_surface::contact::{Facing, facing};
 use pellicle_surface::geometry::{Curvature, Geometry, RimCondition};
 use serde::{Deserialize, Serialize};
 
@@ -24,12 +25,14 @@ pub struct Energies {
     pub stretching: f64,
     /// Pressure, osmotic and lipid reservoirs.
     pub reservoirs: f64,
+    /// Repulsion of facing parts of the membrane.
+    pub repulsion: f64,
 }
 
 impl Energies {
     /// Sum of all terms.
     pub fn total(&self) -> f64 {
-        self.bending + self.gaussian + self.phase + self.protein + self.stretching + self.reservoirs
+        self.bending + self.gaussian + self.phase + self.protein + self.stretching + self.reservoirs + self.repulsion
     }
 }
 
@@ -55,6 +58,10 @@ pub struct Measured {
     pub coverage: Vec<f64>,
     /// Vertices whose bending residual is dropped: hinged rims.
     pub held: Vec<bool>,
+    /// Enclosed volume of each piece.
+    pub piece_volume: Vec<f64>,
+    /// Vertices that face another part of the membrane within the range of the repulsion.
+    pub contacts: Vec<Facing>,
 }
 
 /// The rim condition of a state.
@@ -69,6 +76,13 @@ impl Measured {
     /// Measure a state.
     pub fn update(&mut self, parameters: &Parameters, topology: &Topology, state: &State) {
         self.geometry.update(&state.mesh);
+        self.piece_volume = self.geometry.piece_volumes(&state.mesh, topology);
+        self.contacts.clear();
+        if let SelfContact::Repel(law) = &parameters.self_contact {
+            let reach = repulsion::REACH * law.decay_length;
+            let reach = state.mesh.period.map_or(reach, |period| reach.min(0.4 * period));
+            self.contacts = facing(&state.mesh, topology, &self.geometry, reach);
+        }
         self.curvature.update(
             &state.mesh,
             topology,
@@ -124,9 +138,17 @@ impl Measured {
                 &self.geometry.vertex_area,
                 &state.lipid,
             ),
-            reservoirs: reservoirs::energy(&parameters.volume, self.geometry.volume),
+            reservoirs: self
+                .piece_volume
+                .iter()
+                .zip(&state.pieces)
+                .map(|(volume, piece)| reservoirs::energy(&parameters.volume, *volume, piece.share))
+                .sum(),
             ..Energies::default()
         };
+        if let SelfContact::Repel(law) = &parameters.self_contact {
+            energies.repulsion = repulsion::energy(law, &self.geometry.vertex_area, &self.contacts);
+        }
         if parameters.phases.is_some() {
             energies.phase = interface::energy(&state.mesh, &self.geometry, &self.interface, &self.order);
         }

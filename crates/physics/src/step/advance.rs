@@ -5,14 +5,16 @@ use super::connectivity::Connectivity;
 use super::mechanics::{self, Motion, Timings};
 use super::mesh_care::CareReport;
 use super::rezone::keeps_orientation;
+use super::severing::Severing;
+use super::touching::Clearance;
 use crate::PhysicsError;
 use crate::dissipation::tension_stabilisation;
 use crate::energy::total::Measured;
 use crate::energy::{Energies, interface, stretching};
-use crate::parameters::{Parameters, Pull, VolumeCondition, along_path};
+use crate::parameters::{Parameters, Pull, SelfContact, VolumeCondition, along_path};
 use crate::state::{Ledger, State, pull_at};
 use crate::transport::diffusion::DiffusionSolver;
-use pellicle_surface::Vec3;
+use pellicle_surface::{Mesh, Vec3};
 use std::time::Instant;
 
 /// A membrane in motion.
@@ -35,6 +37,7 @@ pub struct Simulation {
     pub timings: Timings,
     pub(super) diffusion: Option<DiffusionSolver>,
     pub(super) mesh_velocity: Vec<Vec3>,
+    pub(super) clearance: Clearance,
 }
 
 /// What an accepted step did.
@@ -62,6 +65,8 @@ pub struct StepReport {
     pub unrest: f64,
     /// What was done to the mesh after the step.
     pub care: CareReport,
+    /// Necks that were severed after the step.
+    pub severed: Vec<Severing>,
 }
 
 /// Share of everything dissipated so far within which a step's own defect does not count.
@@ -81,8 +86,6 @@ const STRICT_STEPS: u64 = 20;
 const DEFECT_FACTOR: f64 = 4.0;
 /// Share of the loads' work that care of the mesh may spend.
 const CREDIT: f64 = 0.02;
-/// Rounds of [`Simulation::settle_lipids`].
-const SETTLING_ROUNDS: usize = 8;
 
 /// Work during a step: with the force at its end, by which the implicit step can only lose energy; and with the force
 /// along the way (the mean of the ends where it grows or falls steadily), which goes into the ledger.
@@ -111,6 +114,9 @@ impl Simulation {
                 "a surface with a rim needs a frame (clamped or hinged), a closed one cannot have one",
             ));
         }
+        if state.pieces.len() != connectivity.topology.n_pieces {
+            return Err(PhysicsError::Contradiction("the pieces of the state are not those of its surface"));
+        }
         if parameters.phases.is_some() == state.composition_amount.is_empty() {
             return Err(PhysicsError::Contradiction("phases and a start composition go together"));
         }
@@ -125,6 +131,7 @@ impl Simulation {
             timings: Timings::default(),
             diffusion: None,
             mesh_velocity: vec![Vec3::zeros(); state.mesh.n_vertices()],
+            clearance: Clearance::default(),
             parameters,
             state,
             connectivity,
@@ -138,63 +145,6 @@ impl Simulation {
             simulation.state.ledger.start_energy = simulation.energies.total();
         }
         Ok(simulation)
-    }
-
-    /// Give the lipids the density that is at ease with the tension of the start shape. Otherwise the first step would
-    /// stretch or compress the membrane at once, and the energy of that would spoil the ledger.
-    fn settle_lipids(&mut self) -> Result<(), PhysicsError> {
-        let modulus = self.parameters.area_compression_modulus;
-        // Only where they lie as `State::at_rest` put them; who laid them otherwise had a reason.
-        let relaxed = 1.0 + self.state.tension.first().copied().unwrap_or(0.0) / modulus;
-        let untouched = self
-            .state
-            .lipid
-            .iter()
-            .zip(&self.measured.geometry.vertex_area)
-            .all(|(m, a)| (m * relaxed - a).abs() <= 1e-6 * a);
-        if !untouched {
-            return Ok(());
-        }
-        let (composition, coverage, marker) =
-            (self.state.composition(), self.state.coverage(), self.state.marker());
-        let area = self.measured.geometry.total_area;
-        let mean = |tension: &[f64], areas: &[f64]| -> f64 {
-            tension.iter().zip(areas).map(|(t, a)| t * a).sum::<f64>() / area
-        };
-        for _ in 0..SETTLING_ROUNDS {
-            let motion = mechanics::solve(
-                &self.parameters,
-                &mut self.connectivity,
-                &self.state,
-                &self.measured,
-                self.parameters.step.first,
-                &mut self.timings,
-            )?;
-            let areas = &self.measured.geometry.vertex_area;
-            let (new, old) = (mean(&motion.tension, areas), mean(&self.state.tension, areas));
-            // Half of K_A at most: a tension beyond that is not one a membrane could bear at the start. A rough mesh
-            // has local tensions that say nothing about the membrane.
-            let middle = new.clamp(-0.5 * modulus, 0.5 * modulus);
-            let local = |t: f64| middle + (t - new).clamp(-0.01 * modulus, 0.01 * modulus);
-            let State { lipid, composition_amount, bound_amount, marker_amount, tension, .. } = &mut self.state;
-            for ((m, a), (t, solved)) in lipid.iter_mut().zip(areas).zip(tension.iter_mut().zip(&motion.tension)) {
-                *t = local(*solved);
-                *m = a / (1.0 + *t / modulus);
-            }
-            for (amount, field) in
-                [(composition_amount, &composition), (bound_amount, &coverage), (marker_amount, &marker)]
-            {
-                for (n, (f, m)) in amount.iter_mut().zip(field.iter().zip(lipid.iter())) {
-                    *n = f * m;
-                }
-            }
-            self.state.pressure = motion.pressure;
-            self.measure();
-            if (new - old).abs() <= 1e-3 * (new.abs() + self.parameters.bending_rigidity.at_zero / area) {
-                break;
-            }
-        }
-        Ok(())
     }
 
     /// Measure the present state again.
@@ -218,10 +168,11 @@ impl Simulation {
         self.chemical_potential.clear();
     }
 
-    /// Relative mismatch of the second law so far: (F − F₀ + dissipated − work) / (largest of their sizes).
+    /// Relative mismatch of the second law so far: (F − F₀ − severing + dissipated − work) / (largest of their sizes).
+    /// What F jumps by where a neck is severed is an entry of its own: nothing resolves on which way it is spent.
     pub fn energy_balance_error(&self) -> f64 {
         let ledger = &self.state.ledger;
-        let change = self.energies.total() - ledger.start_energy;
+        let change = self.energies.total() - ledger.start_energy - ledger.severing;
         let scale = change.abs().max(ledger.dissipated.abs()).max(ledger.work.abs());
         if scale == 0.0 {
             0.0
@@ -240,11 +191,12 @@ impl Simulation {
         let mut refused = Vec::new();
         loop {
             let before = self.state.clone();
-            let energies = self.energies;
-            let outcome = match self.attempt(step) {
+            let (energies, clearance) = (self.energies, self.clearance);
+            let outcome = match self.attempt(step, &before.mesh) {
                 Ok(outcome) => outcome,
                 Err(error) => {
                     self.state = before;
+                    self.clearance = clearance;
                     self.measure();
                     return Err(error);
                 }
@@ -265,6 +217,8 @@ impl Simulation {
                         - before.ledger.work
                         - self.energies.total();
                     report.care = self.care(released)?;
+                    self.note_care(&report.care);
+                    report.severed = self.sever_thin_necks()?;
                     report.free_energy = self.energies.total();
                     self.timings.remeshing += clock.elapsed().as_secs_f64();
                     return Ok(*report);
@@ -272,6 +226,7 @@ impl Simulation {
                 Attempt::Refused(reason) => {
                     let ledger_refused = before.ledger.refused + 1;
                     self.state = before;
+                    self.clearance = clearance;
                     self.state.ledger.refused = ledger_refused;
                     self.measured.update(&self.parameters, &self.connectivity.topology, &self.state);
                     self.energies = energies;
@@ -290,7 +245,7 @@ impl Simulation {
         }
     }
 
-    fn attempt(&mut self, step: f64) -> Result<Attempt, PhysicsError> {
+    fn attempt(&mut self, step: f64, from: &Mesh) -> Result<Attempt, PhysicsError> {
         let start = self.energies;
         let mut loads = Loads::default();
         let ledger = &self.state.ledger;
@@ -339,6 +294,7 @@ impl Simulation {
         let clock = Instant::now();
         let mesh_velocity = self.mesh_velocity(&motion.velocity);
         loads.add(Reason::Travel, self.travel(&motion.velocity, &mesh_velocity, step));
+        loads.add(Reason::SelfContact, self.approach(&motion.velocity, step));
         if let Some(reason) = loads.refusal(latitude) {
             return Ok(Attempt::Refused(reason));
         }
@@ -369,6 +325,12 @@ impl Simulation {
         if let Some(reason) = loads.refusal(latitude) {
             return Ok(Attempt::Refused(reason));
         }
+        if let Some(place) = self.passes_through_itself(from) {
+            return match self.parameters.self_contact {
+                SelfContact::Stop => Err(PhysicsError::SelfContact { time: self.state.time, place }),
+                SelfContact::Repel(_) => Ok(Attempt::Refused(Reason::SelfContact)),
+            };
+        }
         let ledger = &mut self.state.ledger;
         ledger.dissipated += dissipated;
         ledger.work += work.with_mean_force;
@@ -391,6 +353,7 @@ impl Simulation {
             dissipated,
             unrest,
             care: CareReport::default(),
+            severed: Vec::new(),
         };
         self.state.velocity = motion.velocity;
         self.mesh_velocity = mesh_velocity;
@@ -443,9 +406,11 @@ impl Simulation {
                 (along_path(path, self.state.time), along_path(path, self.state.time + step))
         {
             let first = self.state.ledger.accepted == 0;
-            let before = if first { motion.pressure } else { self.state.pressure };
-            work.with_final_force += motion.pressure * (b - a);
-            work.with_mean_force += 0.5 * (motion.pressure + before) * (b - a);
+            for (piece, now) in self.state.pieces.iter().zip(&motion.pressure) {
+                let before = if first { *now } else { piece.pressure };
+                work.with_final_force += now * piece.share * (b - a);
+                work.with_mean_force += 0.5 * (now + before) * piece.share * (b - a);
+            }
         }
         work
     }
@@ -476,16 +441,17 @@ impl Simulation {
             lipid,
             &mut [composition_amount, bound_amount, marker_amount],
         );
-        if motion.exchange != 0.0 {
-            let factor = 1.0 + step * motion.exchange;
+        if !motion.exchange.is_empty() {
+            let piece = &self.connectivity.topology.piece;
             let before: f64 = lipid.iter().sum();
-            for list in [lipid, composition_amount, bound_amount, marker_amount] {
-                list.iter_mut().for_each(|m| *m *= factor);
+            let factor = |v: usize| 1.0 + step * motion.exchange[piece[v] as usize];
+            for list in [&mut *lipid, composition_amount, bound_amount, marker_amount] {
+                list.iter_mut().enumerate().for_each(|(v, m)| *m *= factor(v));
             }
-            state.ledger.lipid_drawn += before * (factor - 1.0);
+            state.ledger.lipid_drawn += lipid.iter().sum::<f64>() - before;
         }
         state.tension.clone_from(&motion.tension);
-        state.pressure = motion.pressure;
+        state.set_pressures(&motion.pressure);
         for (k, load) in state.loads.iter_mut().enumerate() {
             let velocity = motion.weights[k]
                 .iter()

@@ -110,6 +110,8 @@ pub struct MatrixInput<'a> {
     pub deviatoric: bool,
     /// Freedom of each vertex.
     pub freedom: &'a [Freedom],
+    /// Stiffness of the repulsion between facing parts, a block per vertex; empty without.
+    pub repulsion: &'a [Matrix3<f64>],
 }
 
 /// Vertices whose columns one task assembles.
@@ -212,6 +214,10 @@ fn assemble_columns(input: &MatrixInput, j: usize, out: &mut [f64]) {
     let last = pattern.column_blocks[j + 1] as usize - 1;
     let start = &pattern.block_start[last];
     let friction = input.friction[j];
+    if let Some(stiff) = input.repulsion.get(j) {
+        let block = own.reduce_rows(own.reduce_columns(stiff * input.step));
+        add_velocity_block(out, start, &block, true);
+    }
     match own {
         Freedom::Free => {
             for (c, first) in start[..3].iter().enumerate() {

@@ -9,7 +9,7 @@ use crate::energy::reservoirs::offered_pressure;
 use crate::energy::total::Measured;
 use crate::parameters::{Parameters, VolumeCondition};
 use crate::state::State;
-use pellicle_surface::Vec3;
+use pellicle_surface::{Topology, Vec3};
 
 /// One scalar unknown with its equation.
 #[derive(Clone, Debug)]
@@ -22,15 +22,27 @@ pub struct Border {
     pub target: f64,
 }
 
+/// A piece of membrane, as its borders need it.
+#[derive(Clone, Copy, Debug)]
+pub(super) struct PieceMeasure {
+    pub index: u32,
+    pub volume: f64,
+    pub area: f64,
+    pub share: f64,
+}
+
+/// The volume of a piece and its pressure; `target`: the volume held at the end of the step.
 pub(super) fn volume_border(
     parameters: &Parameters,
+    topology: &Topology,
     geometry: &pellicle_surface::geometry::Geometry,
     freedom: &[Freedom],
+    piece: PieceMeasure,
     target: Option<f64>,
     step: f64,
 ) -> Option<Border> {
     let (diagonal, right) = match (&parameters.volume, target) {
-        (VolumeCondition::Fixed(_), Some(target)) => (0.0, -(target - geometry.volume) / step),
+        (VolumeCondition::Fixed(_), Some(target)) => (0.0, -(target - piece.volume) / step),
         (
             VolumeCondition::Osmotic {
                 inside,
@@ -40,16 +52,18 @@ pub(super) fn volume_border(
             _,
         ) => {
             // ∇V·v (1/(A L_p) − dt dΠ/dV) + p = Π(V).
-            let slope = -inside / (geometry.volume * geometry.volume);
-            let resistance = permeability.map_or(0.0, |l| 1.0 / (l * geometry.total_area)) - step * slope;
-            let offered = offered_pressure(&parameters.volume, geometry.volume).unwrap_or(0.0);
+            let slope = -inside * piece.share / (piece.volume * piece.volume);
+            let resistance = permeability.map_or(0.0, |l| 1.0 / (l * piece.area)) - step * slope;
+            let offered = offered_pressure(&parameters.volume, piece.volume, piece.share).unwrap_or(0.0);
             (-1.0 / resistance, -offered / resistance)
         }
         _ => return None,
     };
     let mut column = vec![0.0; 4 * freedom.len()];
     for (i, (f, g)) in freedom.iter().zip(&geometry.volume_gradient).enumerate() {
-        column[4 * i..4 * i + 3].copy_from_slice(&f.reduce(&-g));
+        if topology.piece[i] == piece.index {
+            column[4 * i..4 * i + 3].copy_from_slice(&f.reduce(&-g));
+        }
     }
     Some(Border {
         column,
@@ -58,12 +72,19 @@ pub(super) fn volume_border(
     })
 }
 
-/// Mean tension of a closed surface equals the reservoir's; the interface's share μ̂u is taken off.
-pub(super) fn reservoir_border(state: &State, measured: &Measured, forces: &Forces, tension: f64) -> Border {
+/// Mean tension of a closed piece equals the reservoir's; the interface's share μ̂u is taken off.
+pub(super) fn reservoir_border(
+    state: &State,
+    topology: &Topology,
+    measured: &Measured,
+    forces: &Forces,
+    tension: f64,
+    piece: u32,
+) -> Border {
     let n = state.lipid.len();
     let mut column = vec![0.0; 4 * n];
     let mut target = 0.0;
-    for i in 0..n {
+    for i in (0..n).filter(|&i| topology.piece[i] == piece) {
         column[4 * i + 3] = -state.lipid[i];
         let shift = forces
             .interface_potential

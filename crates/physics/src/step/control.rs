@@ -27,6 +27,8 @@ pub enum Reason {
     Bounds,
     /// The linear system could not be solved.
     Solver,
+    /// Facing parts of the membrane would come too close at once, or pass through each other.
+    SelfContact,
 }
 
 impl Reason {
@@ -44,6 +46,7 @@ impl Reason {
             Reason::Inversion => "a triangle would invert",
             Reason::Bounds => "a field would leave its bounds",
             Reason::Solver => "the linear system could not be solved",
+            Reason::SelfContact => "facing parts of the membrane come too close at once",
         }
     }
 }
@@ -51,14 +54,14 @@ impl Reason {
 /// Each limit as a load: 1 means exactly at its target.
 #[derive(Clone, Copy, Debug)]
 pub struct Loads {
-    entries: [(Reason, f64); 8],
+    entries: [(Reason, f64); 12],
     used: usize,
 }
 
 impl Default for Loads {
     fn default() -> Self {
         Self {
-            entries: [(Reason::None, 0.0); 8],
+            entries: [(Reason::None, 0.0); 12],
             used: 0,
         }
     }

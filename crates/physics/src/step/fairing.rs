@@ -3,7 +3,7 @@
 //! New vertices lie on the surface to third order in the edge length, but curvature is a second derivative: their
 //! places carry a roughness that costs bending energy out of proportion to its height.
 
-use super::rezone::restore_volume;
+use super::rezone::restore_volumes;
 use crate::energy::bending;
 use crate::energy::total::{Measured, rim_condition};
 use crate::parameters::{AreaCondition, Parameters};
@@ -100,29 +100,37 @@ pub(super) fn fair(parameters: &Parameters, topology: &Topology, state: &mut Sta
     }
 }
 
-/// Bring a closed surface back to a volume and an area by the smooth displacement (a + b H) along the normals, H
-/// clipped to what the whole surface has. Where that is not possible (a sphere), only the volume is restored.
-fn restore_volume_and_area(parameters: &Parameters, topology: &Topology, state: &mut State, volume: f64, area: f64) {
+/// Bring a closed piece back to a volume and an area by the smooth displacement (a + b H) along the normals, H
+/// clipped to what the whole piece has. Where that is not possible (a sphere), only the volume is restored.
+fn restore_volume_and_area(
+    parameters: &Parameters,
+    topology: &Topology,
+    state: &mut State,
+    piece: usize,
+    volume: f64,
+    area: f64,
+) {
     let mut measured = Measured::default();
     measured.update(parameters, topology, state);
+    let members: Vec<usize> = (0..topology.n_vertices).filter(|&i| topology.piece[i] as usize == piece).collect();
     let radius = (area / (4.0 * std::f64::consts::PI)).sqrt();
-    let shape: Vec<f64> = measured
-        .curvature
-        .integrated
+    let shape: Vec<f64> = members
         .iter()
-        .zip(&measured.curvature.area)
-        .map(|(b, a)| (b / a * radius).clamp(-1.0, 4.0))
+        .map(|&i| (measured.curvature.integrated[i] / measured.curvature.area[i] * radius).clamp(-1.0, 4.0))
         .collect();
     let start = state.mesh.positions.clone();
     let mut geometry = measured.geometry;
     for _ in 0..3 {
-        let gap = [volume - geometry.volume, area - geometry.total_area];
+        let gap = [
+            volume - geometry.piece_volumes(&state.mesh, topology)[piece],
+            area - geometry.piece_areas(topology)[piece],
+        ];
         let area_gradient = area_gradient(&state.mesh, &geometry);
         let mut m = nalgebra::Matrix2::<f64>::zeros();
-        for i in 0..topology.n_vertices {
+        for (&i, shape) in members.iter().zip(&shape) {
             let normal = geometry.vertex_normal[i];
             let (v, a) = (geometry.volume_gradient[i].dot(&normal), area_gradient[i].dot(&normal));
-            m += nalgebra::Matrix2::new(v, v * shape[i], a, a * shape[i]);
+            m += nalgebra::Matrix2::new(v, v * shape, a, a * shape);
         }
         // Both displacements alike in their effect: the shape has no room to give the area back.
         let scale = m.row(0).norm() * m.row(1).norm();
@@ -135,8 +143,8 @@ fn restore_volume_and_area(parameters: &Parameters, topology: &Topology, state: 
             state.mesh.positions = start;
             return;
         }
-        for (i, x) in state.mesh.positions.iter_mut().enumerate() {
-            *x += geometry.vertex_normal[i] * (step[0] + step[1] * shape[i]);
+        for (&i, shape) in members.iter().zip(&shape) {
+            state.mesh.positions[i] += geometry.vertex_normal[i] * (step[0] + step[1] * shape);
         }
         geometry.update(&state.mesh);
     }
@@ -153,29 +161,37 @@ fn area_gradient(mesh: &Mesh, geometry: &Geometry) -> Vec<Vec3> {
     gradient
 }
 
-/// Fair a changed mesh and restore what it must enclose and cover; lipids keep their density.
+/// Fair a changed mesh and restore what its closed pieces must enclose and cover; lipids keep their density.
 ///
 /// # Shapes
-/// `chosen`: one entry per vertex, see [`touched`]. Returns the lipid drawn from a reservoir.
+/// `chosen`: one entry per vertex, see [`touched`]; `volumes`, `areas`: one per piece. Returns the lipid drawn from a
+/// reservoir.
 pub(super) fn settle(
     parameters: &Parameters,
     topology: &Topology,
     state: &mut State,
     chosen: &[bool],
-    volume: f64,
-    area: f64,
+    volumes: &[f64],
+    areas: &[f64],
 ) -> f64 {
     let before = state.mesh.clone();
     let geometry_before = Geometry::new(&before);
     fair(parameters, topology, state, chosen);
-    if topology.is_closed() {
-        if parameters.area == AreaCondition::Lipid && state.mesh.period.is_none() {
-            restore_volume_and_area(parameters, topology, state, volume, area);
+    let mut geometry = Geometry::new(&state.mesh);
+    let closed = topology.closed_pieces();
+    if closed.contains(&true) {
+        let holds_lipid = parameters.area == AreaCondition::Lipid || parameters.rim.is_some();
+        if holds_lipid && state.mesh.period.is_none() {
+            for piece in (0..closed.len()).filter(|&piece| closed[piece]) {
+                restore_volume_and_area(parameters, topology, state, piece, volumes[piece], areas[piece]);
+            }
         }
-        let mut geometry = Geometry::new(&state.mesh);
-        restore_volume(&mut state.mesh, &mut geometry, &topology.on_rim, volume);
+        geometry.update(&state.mesh);
+        let present = geometry.piece_volumes(&state.mesh, topology);
+        let wanted: Vec<f64> =
+            (0..closed.len()).map(|piece| if closed[piece] { volumes[piece] } else { present[piece] }).collect();
+        restore_volumes(&mut state.mesh, &mut geometry, topology, &wanted);
     }
-    let geometry = Geometry::new(&state.mesh);
     let State { mesh, lipid, composition_amount, bound_amount, marker_amount, .. } = state;
     remap(
         &before,
@@ -193,10 +209,11 @@ pub(super) fn settle(
         return 0.0;
     }
     // The reservoir keeps the density: the polyhedron's area changed, not the membrane's.
-    let factor = geometry.total_area / area;
+    let now = geometry.piece_areas(topology);
     let held: f64 = lipid.iter().sum();
-    for list in [lipid, composition_amount, bound_amount, marker_amount] {
-        list.iter_mut().for_each(|m| *m *= factor);
+    let factor = |i: usize| now[topology.piece[i] as usize] / areas[topology.piece[i] as usize];
+    for list in [&mut *lipid, composition_amount, bound_amount, marker_amount] {
+        list.iter_mut().enumerate().for_each(|(i, m)| *m *= factor(i));
     }
-    held * (factor - 1.0)
+    lipid.iter().sum::<f64>() - held
 }

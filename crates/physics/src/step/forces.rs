@@ -4,11 +4,12 @@ use super::assemble::{Freedom, PositiveStress};
 use super::connectivity::Connectivity;
 use crate::energy::interface::{self, GradientEnergy};
 use crate::energy::total::{Measured, rim_condition};
-use crate::energy::{bending, gaussian};
-use crate::parameters::{AreaCondition, Parameters, Rim};
+use crate::energy::{bending, gaussian, repulsion};
+use crate::parameters::{AreaCondition, Parameters, Rim, SelfContact};
 use crate::state::State;
 use pellicle_surface::geometry::CurvatureGradient;
-use pellicle_surface::{Topology, Vec3};
+use nalgebra::Matrix3;
+use pellicle_surface::{Topology, Vec3, pieces};
 
 /// Freedom of each vertex: rims of patches slide along their conormal when lipid passes there.
 pub fn freedoms(parameters: &Parameters, topology: &Topology, state: &State, measured: &Measured) -> Vec<Freedom> {
@@ -47,6 +48,11 @@ pub struct Forces {
     pub interface_potential: Vec<f64>,
     /// Positive stress of each triangle for the implicit part.
     pub stress: Vec<PositiveStress>,
+    /// Gradient of the repulsion between facing parts, which acts between pieces as well: not in `gradient`. Empty
+    /// without.
+    pub repulsion: Vec<Vec3>,
+    /// Its positive implicit part, a block per vertex; empty without.
+    pub repulsion_stiffness: Vec<Matrix3<f64>>,
 }
 
 /// Evaluate forces of a measured state.
@@ -135,8 +141,8 @@ pub fn forces(
             &mut soft,
         );
     }
-    if (parameters.phases.is_some() || parameters.protein.is_some()) && topology.is_closed() {
-        remove_rigid_load(state, measured, &mut soft);
+    if parameters.phases.is_some() || parameters.protein.is_some() {
+        remove_rigid_load(topology, state, measured, &mut soft);
     }
     for (g, s) in gradient.iter_mut().zip(&soft) {
         *g += s;
@@ -145,7 +151,17 @@ pub fn forces(
         s.along = s.along.max(0.0);
         s.across = s.across.max(0.0);
     }
+    let (mut apart, mut apart_stiffness) = (Vec::new(), Vec::new());
+    if let SelfContact::Repel(law) = &parameters.self_contact
+        && !measured.contacts.is_empty()
+    {
+        apart = vec![Vec3::zeros(); n];
+        repulsion::add_gradient(law, topology, geometry, &measured.contacts, &mut apart);
+        apart_stiffness = repulsion::stiffness(law, topology, geometry, &measured.contacts);
+    }
     Forces {
+        repulsion: apart,
+        repulsion_stiffness: apart_stiffness,
         gradient,
         rows,
         interface_potential,
@@ -153,16 +169,26 @@ pub fn forces(
     }
 }
 
-/// Subtract the rigid load A (c + ω × x) that carries a load's net force and torque: forces within the membrane have
-/// neither, and without drag the smallest net force would make the whole surface drift.
-pub fn remove_rigid_load(state: &State, measured: &Measured, load: &mut [Vec3]) {
-    let area = &measured.geometry.vertex_area;
-    let positions = &state.mesh.positions;
-    let total: f64 = area.iter().sum();
-    let centre = positions.iter().zip(area).fold(Vec3::zeros(), |s, (x, a)| s + x * *a) / total;
-    let periodic = state.mesh.period.is_some();
-    // Columns: three translations and the rotations the surface has (only about its axis when periodic).
-    let rotations: Vec<Vec3> = if periodic {
+/// Subtract, from each closed piece, the rigid load A (c + ω × x) that carries a load's net force and torque: forces
+/// within the membrane have neither, and without drag the smallest net force would make the whole piece drift.
+pub fn remove_rigid_load(topology: &Topology, state: &State, measured: &Measured, load: &mut [Vec3]) {
+    let closed = topology.closed_pieces();
+    if !closed.contains(&true) {
+        return;
+    }
+    let (positions, endless) = pieces::unwrapped(&state.mesh, topology);
+    for (piece, endless) in endless.iter().enumerate().filter(|(piece, _)| closed[*piece]) {
+        let members: Vec<usize> =
+            (0..topology.n_vertices).filter(|&v| topology.piece[v] as usize == piece).collect();
+        remove_from_piece(&members, &positions, &measured.geometry.vertex_area, *endless, load);
+    }
+}
+
+fn remove_from_piece(members: &[usize], positions: &[Vec3], area: &[f64], endless: bool, load: &mut [Vec3]) {
+    let total: f64 = members.iter().map(|&v| area[v]).sum();
+    let centre = members.iter().fold(Vec3::zeros(), |s, &v| s + positions[v] * area[v]) / total;
+    // Columns: three translations and the rotations the surface has (only about its axis when it is endless).
+    let rotations: Vec<Vec3> = if endless {
         vec![Vec3::z()]
     } else {
         vec![Vec3::x(), Vec3::y(), Vec3::z()]
@@ -179,12 +205,12 @@ pub fn remove_rigid_load(state: &State, measured: &Measured, load: &mut [Vec3]) 
     let m = 3 + rotations.len();
     let mut gram = nalgebra::DMatrix::<f64>::zeros(m, m);
     let mut right = nalgebra::DVector::<f64>::zeros(m);
-    for ((x, a), f) in positions.iter().zip(area).zip(load.iter()) {
+    for &v in members {
         for r in 0..m {
-            let mr = motion(r, x);
-            right[r] += mr.dot(f);
+            let mr = motion(r, &positions[v]);
+            right[r] += mr.dot(&load[v]);
             for c in 0..=r {
-                gram[(r, c)] += a * mr.dot(&motion(c, x));
+                gram[(r, c)] += area[v] * mr.dot(&motion(c, &positions[v]));
             }
         }
     }
@@ -194,9 +220,9 @@ pub fn remove_rigid_load(state: &State, measured: &Measured, load: &mut [Vec3]) 
         }
     }
     if let Some(amount) = gram.cholesky().map(|c| c.solve(&right)) {
-        for ((x, a), f) in positions.iter().zip(area).zip(load.iter_mut()) {
+        for &v in members {
             for r in 0..m {
-                *f -= motion(r, x) * (a * amount[r]);
+                load[v] -= motion(r, &positions[v]) * (area[v] * amount[r]);
             }
         }
     }

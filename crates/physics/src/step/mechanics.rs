@@ -1,7 +1,7 @@
 //! The mechanical part of a step: one linearised solve for velocity, tension and the scalar unknowns.
 
 use super::assemble::{Freedom, MatrixInput, assemble};
-use super::borders::{Border, reservoir_border, trap_border, volume_border};
+use super::borders::{Border, PieceMeasure, reservoir_border, trap_border, volume_border};
 use super::connectivity::Connectivity;
 use super::linear::{LinearSystem, Origin};
 use super::pattern::BlockPattern;
@@ -50,10 +50,10 @@ pub struct Motion {
     pub velocity: Vec<Vec3>,
     /// Tension conjugate to the lipid constraint.
     pub tension: Vec<f64>,
-    /// Pressure difference.
-    pub pressure: f64,
-    /// Relative rate of lipid exchange with a closed surface's reservoir.
-    pub exchange: f64,
+    /// Pressure difference of each piece.
+    pub pressure: Vec<f64>,
+    /// Relative rate of each closed piece's lipid exchange with a reservoir; empty without.
+    pub exchange: Vec<f64>,
     /// Force of each load.
     pub forces: Vec<Vec3>,
     /// Weights of each load patch.
@@ -77,6 +77,7 @@ struct Parts {
     friction: Vec<f64>,
     deviatoric: bool,
     borders: Vec<Border>,
+    pieces: Vec<PieceMeasure>,
     has_volume: bool,
     exchanging: bool,
     weights: Vec<Vec<(u32, f64)>>,
@@ -107,6 +108,7 @@ impl Parts {
             step,
             deviatoric: self.deviatoric,
             freedom: &self.freedom,
+            repulsion: &self.forces.repulsion_stiffness,
         }
     }
 }
@@ -130,13 +132,23 @@ fn parts(
         VolumeCondition::Fixed(path) => along_path(path, state.time + step),
         _ => None,
     };
-    borders.extend(volume_border(parameters, geometry, &freedom, target_volume, step));
-    let has_volume = borders.len() == 1;
+    let pieces: Vec<PieceMeasure> = (measured.piece_volume.iter().zip(geometry.piece_areas(topology)))
+        .zip(&state.pieces)
+        .zip(0..)
+        .map(|(((volume, area), piece), index)| PieceMeasure { index, volume: *volume, area, share: piece.share })
+        .collect();
+    for piece in &pieces {
+        let target = target_volume.map(|volume| volume * piece.share);
+        borders.extend(volume_border(parameters, topology, geometry, &freedom, *piece, target, step));
+    }
+    let has_volume = !borders.is_empty();
     let mut exchanging = false;
     if let AreaCondition::Reservoir(tension) = parameters.area
         && topology.is_closed()
     {
-        borders.push(reservoir_border(state, measured, &forces, tension));
+        for piece in &pieces {
+            borders.push(reservoir_border(state, topology, measured, &forces, tension, piece.index));
+        }
         exchanging = true;
     }
     let mut weights = Vec::new();
@@ -158,6 +170,7 @@ fn parts(
         freedom,
         surroundings,
         borders,
+        pieces,
         has_volume,
         exchanging,
         weights,
@@ -184,8 +197,12 @@ fn push(parameters: &Parameters, topology: &Topology, state: &State, measured: &
             }
         }
     }
-    if parameters.loads.is_empty() && topology.is_closed() && parameters.friction == 0.0 {
-        remove_rigid_load(state, measured, &mut push);
+    if parameters.loads.is_empty() && parameters.friction == 0.0 {
+        remove_rigid_load(topology, state, measured, &mut push);
+    }
+    // Pieces may push each other away.
+    for (f, g) in push.iter_mut().zip(&parts.forces.repulsion) {
+        *f -= g;
     }
     push
 }
@@ -234,7 +251,7 @@ pub fn solve(
 
     let n = topology.n_vertices;
     let geometry = &measured.geometry;
-    let Parts { freedom, borders, forces, weights, .. } = &parts;
+    let Parts { freedom, borders, pieces, forces, weights, .. } = &parts;
     let push = push(parameters, topology, state, measured, &parts, state.time + step);
     let mut y = vec![0.0; 4 * n + borders.len()];
     let mut guess = vec![0.0; 4 * n + borders.len()];
@@ -248,7 +265,9 @@ pub fn solve(
         y[4 * n + k] = border.target;
     }
     if parts.has_volume {
-        guess[4 * n] = state.pressure;
+        for (guess, piece) in guess[4 * n..].iter_mut().zip(&state.pieces) {
+            *guess = piece.pressure;
+        }
     }
     let system = LinearSystem { values, borders, input: &input };
     let residual = solver.solve(&system, &guess, &mut y, || Origin::of(state, step), timings)?;
@@ -260,12 +279,18 @@ pub fn solve(
     let velocity: Vec<Vec3> = (0..n).map(|i| freedom[i].expand(&y[4 * i..4 * i + 3])).collect();
     let tension: Vec<f64> = (0..n).map(|i| y[4 * i + 3]).collect();
     let mut next = scalars.iter();
-    let pressure = if parts.has_volume {
-        next.next().copied().unwrap_or(0.0)
-    } else {
-        offered_pressure(&parameters.volume, geometry.volume).unwrap_or(0.0)
-    };
-    let exchange = if parts.exchanging { next.next().copied().unwrap_or(0.0) } else { 0.0 };
+    let pressure = pieces
+        .iter()
+        .map(|piece| {
+            if parts.has_volume {
+                next.next().copied().unwrap_or(0.0)
+            } else {
+                offered_pressure(&parameters.volume, piece.volume, piece.share).unwrap_or(0.0)
+            }
+        })
+        .collect();
+    let exchange =
+        if parts.exchanging { pieces.iter().map(|_| next.next().copied().unwrap_or(0.0)).collect() } else { Vec::new() };
     let mut load_forces = Vec::new();
     for load in &parameters.loads {
         load_forces.push(match &load.pull {
@@ -282,20 +307,18 @@ pub fn solve(
     let viscous = boussinesq_rate(state, measured, &velocity, parts.deviatoric);
     let drag = parts.surroundings.dissipation(geometry, &velocity);
     let stiff = implicit_work(topology, stencils, forces, geometry, &velocity, step);
-    let volume_rate: f64 = geometry
-        .volume_gradient
-        .iter()
-        .zip(&velocity)
-        .map(|(g, v)| g.dot(v))
-        .sum();
-    let (permeation, baths) = match &parameters.volume {
-        VolumeCondition::Osmotic { inside, permeability, .. } => (
-            permeability.map_or(0.0, |permeability| volume_rate * volume_rate / (permeability * geometry.total_area)),
+    let mut volume_rate = vec![0.0; pieces.len()];
+    for ((g, v), piece) in geometry.volume_gradient.iter().zip(&velocity).zip(&topology.piece) {
+        volume_rate[*piece as usize] += g.dot(v);
+    }
+    let (mut permeation, mut baths) = (0.0, 0.0);
+    if let VolumeCondition::Osmotic { inside, permeability, .. } = &parameters.volume {
+        for (rate, piece) in volume_rate.iter().zip(pieces) {
+            permeation += permeability.map_or(0.0, |permeability| rate * rate / (permeability * piece.area));
             // Half of how far the osmotic energy bends along the way, as the stiff parts below.
-            0.5 * inside * (step * volume_rate / geometry.volume).powi(2),
-        ),
-        _ => (0.0, 0.0),
-    };
+            baths += 0.5 * inside * piece.share * (step * rate / piece.volume).powi(2);
+        }
+    }
     Ok(Motion {
         velocity,
         tension,
@@ -360,7 +383,9 @@ fn implicit_work(
             geometry.area[t] * (s.along * slope.norm_squared() + (s.across - s.along) * across * across)
         })
         .sum();
-    0.5 * step * step * (bending + stress)
+    let repulsion: f64 =
+        forces.repulsion_stiffness.iter().zip(velocity).map(|(stiff, v)| v.dot(&(stiff * v))).sum();
+    0.5 * step * step * (bending + stress + repulsion)
 }
 
 fn add_rim_traction(

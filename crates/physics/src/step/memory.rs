@@ -4,6 +4,7 @@ use super::advance::Simulation;
 use super::connectivity::Connectivity;
 use super::linear::{Origin, Tally};
 use super::mechanics;
+use super::touching::Clearance;
 use crate::state::Ledger;
 use crate::{Parameters, PhysicsError, State};
 use pellicle_surface::Vec3;
@@ -25,6 +26,8 @@ pub struct Memory {
     pub origin: Option<Origin>,
     /// What it has cost.
     pub tally: Tally,
+    /// How far the surface is known to be from touching itself.
+    pub clearance: Clearance,
 }
 
 impl Simulation {
@@ -51,6 +54,7 @@ impl Simulation {
             ordered_at: self.connectivity.ordered_at.clone(),
             origin,
             tally,
+            clearance: self.clearance,
         }
     }
 
@@ -89,6 +93,7 @@ impl Simulation {
         simulation.mesh_velocity = memory.mesh_velocity;
         simulation.wanted_edge = memory.wanted_edge;
         simulation.chemical_potential = memory.chemical_potential;
+        simulation.clearance = memory.clearance;
         Ok(simulation)
     }
 }

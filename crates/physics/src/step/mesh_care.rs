@@ -15,6 +15,7 @@ use crate::energy::total::Measured;
 use crate::parameters::MeshCare;
 use crate::state::{State, load_weights, weighted_mean};
 use pellicle_surface::geometry::Geometry;
+use pellicle_surface::pieces::successors;
 use pellicle_surface::remesh::{
     RemeshOptions, SizingRequest, VertexData, curvature_size, flip_to_delaunay_with, quality, remesh, sizing_field,
 };
@@ -110,22 +111,6 @@ impl Simulation {
 
     /// A better mesh, if there is something to do.
     fn propose(&mut self, care: &MeshCare, most_vertices: usize) -> Result<Option<Proposal>, PhysicsError> {
-        let data = || {
-            let state = &self.state;
-            let n = state.mesh.n_vertices();
-            let mut amounts = vec![state.lipid.clone()];
-            for list in [&state.composition_amount, &state.bound_amount, &state.marker_amount] {
-                if list.len() == n {
-                    amounts.push(list.clone());
-                }
-            }
-            let mut fields = vec![state.tension.clone()];
-            if !state.interface_width.is_empty() {
-                fields.push(state.interface_width.clone());
-            }
-            fields.extend((0..3).map(|axis| state.velocity.iter().map(|v| v[axis]).collect()));
-            VertexData { amounts, fields }
-        };
         if care.adapt && self.state.ledger.accepted % SIZING_EVERY == 0 {
             let target = self.wanted_sizes(care)?;
             let unfit = self.unfit(&target);
@@ -138,7 +123,7 @@ impl Simulation {
                     max_vertices: most_vertices,
                     ..RemeshOptions::default()
                 };
-                let outcome = remesh(&self.state.mesh, &data(), &target, &options)?;
+                let outcome = remesh(&self.state.mesh, &self.vertex_data(), &target, &options)?;
                 if outcome.changed() {
                     return Ok(Some(Proposal {
                         counts: [outcome.flips, outcome.splits, outcome.collapses],
@@ -153,7 +138,7 @@ impl Simulation {
         if self.is_delaunay() {
             return Ok(None);
         }
-        let outcome = flip_to_delaunay_with(&self.state.mesh, &data(), FLIP_TOLERANCE)?;
+        let outcome = flip_to_delaunay_with(&self.state.mesh, &self.vertex_data(), FLIP_TOLERANCE)?;
         Ok((outcome.flips > 0).then(|| Proposal {
             counts: [outcome.flips, 0, 0],
             mesh: outcome.mesh,
@@ -243,40 +228,15 @@ impl Simulation {
 
     /// Adopt a proposal unless it raises the free energy by more than `allowance`.
     fn adopt(&mut self, proposal: Proposal, allowance: f64) -> Result<bool, PhysicsError> {
-        let mut state = State {
-            mesh: proposal.mesh,
-            ..self.state.clone()
-        };
+        let mut state = self.carried_to(proposal.mesh, proposal.data, proposal.old_to_new.as_deref());
         let topology = Topology::new(state.mesh.n_vertices(), &state.mesh.triangles)?;
-        let mut amounts = proposal.data.amounts.into_iter();
-        state.lipid = amounts.next().unwrap_or_default();
-        for list in [&mut state.composition_amount, &mut state.bound_amount, &mut state.marker_amount] {
-            if !list.is_empty() {
-                *list = amounts.next().unwrap_or_default();
-            }
-        }
-        let mut fields = proposal.data.fields.into_iter();
-        state.tension = fields.next().unwrap_or_default();
-        if !state.interface_width.is_empty() {
-            state.interface_width = fields.next().unwrap_or_default();
-        }
-        state.velocity = vec![Vec3::zeros(); state.mesh.n_vertices()];
-        for (axis, list) in fields.enumerate() {
-            for (v, value) in state.velocity.iter_mut().zip(list) {
-                v[axis] = value;
-            }
-        }
-        if let Some(old_to_new) = &proposal.old_to_new
-            && !state.rim_normals.is_empty()
-        {
-            let mut normals = vec![Vec3::zeros(); state.mesh.n_vertices()];
-            for (old, new) in old_to_new.iter().enumerate() {
-                if let Some(new) = new {
-                    normals[*new as usize] = state.rim_normals[old];
-                }
-            }
-            state.rim_normals = normals;
-        }
+        let old = &self.connectivity.topology;
+        let was = successors(old, &topology, proposal.old_to_new.as_deref());
+        let Some(was) = was.into_iter().collect::<Option<Vec<u32>>>() else {
+            return Ok(false);
+        };
+        state.pieces = was.iter().map(|&p| self.state.pieces[p as usize]).collect();
+        let in_order = |values: Vec<f64>| -> Vec<f64> { was.iter().map(|&p| values[p as usize]).collect() };
         let chosen = touched(
             &self.state.mesh,
             &self.connectivity.topology,
@@ -284,9 +244,9 @@ impl Simulation {
             &topology,
             proposal.old_to_new.as_deref(),
         );
-        let present = &self.measured.geometry;
-        let drawn =
-            settle(&self.parameters, &topology, &mut state, &chosen, present.volume, present.total_area);
+        let volumes = in_order(self.measured.piece_volume.clone());
+        let areas = in_order(self.measured.geometry.piece_areas(old));
+        let drawn = settle(&self.parameters, &topology, &mut state, &chosen, &volumes, &areas);
         state.ledger.lipid_drawn += drawn;
         let geometry = Geometry::new(&state.mesh);
         wrap(&mut state.mesh);
@@ -302,6 +262,71 @@ impl Simulation {
         if change.is_nan() || change > allowance {
             return Ok(false);
         }
+        self.take_over(state, measured, energies, proposal.target_edge)?;
+        Ok(true)
+    }
+
+    /// Everything the vertices carry.
+    pub(super) fn vertex_data(&self) -> VertexData {
+        let state = &self.state;
+        let n = state.mesh.n_vertices();
+        let mut amounts = vec![state.lipid.clone()];
+        for list in [&state.composition_amount, &state.bound_amount, &state.marker_amount] {
+            if list.len() == n {
+                amounts.push(list.clone());
+            }
+        }
+        let mut fields = vec![state.tension.clone()];
+        if !state.interface_width.is_empty() {
+            fields.push(state.interface_width.clone());
+        }
+        fields.extend((0..3).map(|axis| state.velocity.iter().map(|v| v[axis]).collect()));
+        VertexData { amounts, fields }
+    }
+
+    /// The present state with another mesh and what its vertices carry; `pieces` are still the old ones.
+    pub(super) fn carried_to(&self, mesh: Mesh, data: VertexData, old_to_new: Option<&[Option<u32>]>) -> State {
+        let mut state = State { mesh, ..self.state.clone() };
+        let mut amounts = data.amounts.into_iter();
+        state.lipid = amounts.next().unwrap_or_default();
+        for list in [&mut state.composition_amount, &mut state.bound_amount, &mut state.marker_amount] {
+            if !list.is_empty() {
+                *list = amounts.next().unwrap_or_default();
+            }
+        }
+        let mut fields = data.fields.into_iter();
+        state.tension = fields.next().unwrap_or_default();
+        if !state.interface_width.is_empty() {
+            state.interface_width = fields.next().unwrap_or_default();
+        }
+        state.velocity = vec![Vec3::zeros(); state.mesh.n_vertices()];
+        for (axis, list) in fields.enumerate() {
+            for (v, value) in state.velocity.iter_mut().zip(list) {
+                v[axis] = value;
+            }
+        }
+        if let Some(old_to_new) = old_to_new
+            && !state.rim_normals.is_empty()
+        {
+            let mut normals = vec![Vec3::zeros(); state.mesh.n_vertices()];
+            for (old, new) in old_to_new.iter().enumerate() {
+                if let Some(new) = new {
+                    normals[*new as usize] = state.rim_normals[old];
+                }
+            }
+            state.rim_normals = normals;
+        }
+        state
+    }
+
+    /// Go on from a measured state with another connectivity.
+    pub(super) fn take_over(
+        &mut self,
+        state: State,
+        measured: Measured,
+        energies: Energies,
+        wanted_edge: Vec<f64>,
+    ) -> Result<(), PhysicsError> {
         // The old factor makes room before the new one is laid out.
         self.connectivity.solver.release();
         self.connectivity.values = Vec::new();
@@ -309,11 +334,11 @@ impl Simulation {
         self.connectivity = Connectivity::new(&state)?;
         self.timings.analyses += 1;
         self.state = state;
-        self.wanted_edge = proposal.target_edge;
+        self.wanted_edge = wanted_edge;
         self.forget_connectivity();
         self.measured = measured;
         self.energies = energies;
-        Ok(true)
+        Ok(())
     }
 
     /// Smooth around poor triangles. Returns how many vertices were chosen.

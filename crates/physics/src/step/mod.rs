@@ -17,4 +17,7 @@ pub mod pattern;
 pub mod preconditioner;
 pub mod rezone;
 mod ring;
+mod settling;
+pub mod severing;
 pub mod split;
+pub mod touching;

@@ -9,7 +9,7 @@ use pellicle_surface::geometry::Geometry;
 use pellicle_surface::geometry::shape_operator::{second_form, shape_operators};
 use pellicle_surface::mesh_motion::{smoothest_velocity, smoothing_target};
 use pellicle_surface::remap::{Carried, remap};
-use pellicle_surface::{Mesh, Vec3};
+use pellicle_surface::{Mesh, Topology, Vec3};
 
 /// Smallest cosine between a triangle's normals before and after a step.
 const SMALLEST_TURN: f64 = 0.5;
@@ -50,18 +50,26 @@ impl Simulation {
         let slide: Vec<Vec3> = (0..self.state.mesh.n_vertices())
             .map(|i| (mesh_velocity[i] - motion.velocity[i]) * step)
             .collect();
-        let volume = match &self.parameters.volume {
+        let topology = &self.connectivity.topology;
+        let fixed = match &self.parameters.volume {
             VolumeCondition::Fixed(path) => along_path(path, self.state.time + step),
-            // As much as the step let through. What the moved surface encloses differs from it in second order, which
-            // against the pressure of osmolytes is a lot.
-            VolumeCondition::Osmotic { .. } => {
-                let old = &self.measured.geometry;
-                let rate: f64 = old.volume_gradient.iter().zip(&motion.velocity).map(|(g, v)| g.dot(v)).sum();
-                Some(old.volume + step * rate)
-            }
             _ => None,
         };
-        self.move_vertices(&geometry, &slide, volume.unwrap_or(geometry.volume))
+        let volumes = match (fixed, &self.parameters.volume) {
+            (Some(volume), _) => self.state.pieces.iter().map(|piece| volume * piece.share).collect(),
+            // As much as the step let through. What the moved surface encloses differs from it in second order, which
+            // against the pressure of osmolytes is a lot.
+            (None, VolumeCondition::Osmotic { .. }) => {
+                let mut volumes = self.measured.piece_volume.clone();
+                let gradient = &self.measured.geometry.volume_gradient;
+                for ((g, v), piece) in gradient.iter().zip(&motion.velocity).zip(&topology.piece) {
+                    volumes[*piece as usize] += step * g.dot(v);
+                }
+                volumes
+            }
+            _ => geometry.piece_volumes(&self.state.mesh, topology),
+        };
+        self.move_vertices(&geometry, &slide, &volumes)
     }
 
     /// Smooth the mesh by `share` of the way to its neighbours' mean at vertices where `chosen`.
@@ -76,7 +84,8 @@ impl Simulation {
             *t *= if *chosen { share } else { 0.0 };
         }
         let saved = self.state.clone();
-        let outcome = self.move_vertices(&geometry, &target, geometry.volume);
+        let volumes = geometry.piece_volumes(&self.state.mesh, &self.connectivity.topology);
+        let outcome = self.move_vertices(&geometry, &target, &volumes);
         if outcome.is_err() {
             self.state = saved;
         }
@@ -84,8 +93,8 @@ impl Simulation {
         outcome
     }
 
-    /// Displace vertices along the surface, keep the given volume, remap everything carried.
-    pub(super) fn move_vertices(&mut self, geometry: &Geometry, slide: &[Vec3], volume: f64) -> Result<(), Reason> {
+    /// Displace vertices along the surface, keep the given volume of each piece, remap everything carried.
+    pub(super) fn move_vertices(&mut self, geometry: &Geometry, slide: &[Vec3], volumes: &[f64]) -> Result<(), Reason> {
         let topology = &self.connectivity.topology;
         let before = self.state.mesh.clone();
         let shape = shape_operators(&before, geometry);
@@ -107,8 +116,8 @@ impl Simulation {
             after.positions[i] += t - normal * (0.5 * second_form(&shape[i], &t));
         }
         let mut after_geometry = Geometry::new(&after);
-        if !(open && volume == 0.0) {
-            restore_volume(&mut after, &mut after_geometry, &topology.on_rim, volume);
+        if !(open && volumes.iter().all(|volume| *volume == 0.0)) {
+            restore_volumes(&mut after, &mut after_geometry, topology, volumes);
         }
         if !keeps_orientation(&after, geometry) {
             return Err(Reason::Inversion);
@@ -158,17 +167,28 @@ impl Simulation {
     }
 }
 
-/// Shift all vertices off the rim along their normals, alike, until the surface encloses `volume`.
-pub(super) fn restore_volume(mesh: &mut Mesh, geometry: &mut Geometry, on_rim: &[bool], volume: f64) {
+/// Shift the vertices of each piece that are off the rim along their normals, alike, until it encloses its volume.
+pub(super) fn restore_volumes(mesh: &mut Mesh, geometry: &mut Geometry, topology: &Topology, volumes: &[f64]) {
     for _ in 0..4 {
-        let gap = volume - geometry.volume;
-        if gap.abs() <= 1e-13 * volume.abs() {
+        let mut gap: Vec<f64> =
+            geometry.piece_volumes(mesh, topology).iter().zip(volumes).map(|(now, wanted)| wanted - now).collect();
+        for (gap, wanted) in gap.iter_mut().zip(volumes) {
+            if gap.abs() <= 1e-13 * wanted.abs() {
+                *gap = 0.0;
+            }
+        }
+        if gap.iter().all(|gap| *gap == 0.0) {
             break;
         }
-        let sweep: f64 =
-            geometry.volume_gradient.iter().zip(on_rim).filter(|(_, rim)| !**rim).map(|(g, _)| g.norm()).sum();
-        for (i, x) in mesh.positions.iter_mut().enumerate().filter(|(i, _)| !on_rim[*i]) {
-            *x += geometry.vertex_normal[i] * (gap / sweep);
+        let mut sweep = vec![0.0; gap.len()];
+        for (i, g) in geometry.volume_gradient.iter().enumerate().filter(|(i, _)| !topology.on_rim[*i]) {
+            sweep[topology.piece[i] as usize] += g.norm();
+        }
+        for (i, x) in mesh.positions.iter_mut().enumerate().filter(|(i, _)| !topology.on_rim[*i]) {
+            let piece = topology.piece[i] as usize;
+            if gap[piece] != 0.0 {
+                *x += geometry.vertex_normal[i] * (gap[piece] / sweep[piece]);
+            }
         }
         geometry.update(mesh);
     }

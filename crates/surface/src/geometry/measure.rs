@@ -1,6 +1,6 @@
 //! First-order geometry: triangle areas, normals, basis gradients, vertex areas, enclosed volume.
 
-use crate::{Mesh, Vec3};
+use crate::{Mesh, Topology, Vec3};
 
 /// Per-triangle and per-vertex measures of a mesh in its present place.
 ///
@@ -59,12 +59,7 @@ impl Geometry {
                 self.gradients[t][c] = normal.cross(&sides[c]) / twice_area;
             }
             self.total_area += 0.5 * twice_area;
-            let centre = (x[0] + x[1] + x[2]) / 3.0;
-            self.volume += if periodic {
-                0.25 * (centre.x * cross.x + centre.y * cross.y)
-            } else {
-                centre.dot(&cross) / 6.0
-            };
+            self.volume += under(&x, &cross, periodic);
             for &v in corners {
                 self.vertex_area[v as usize] += twice_area / 6.0;
                 self.volume_gradient[v as usize] += cross / 6.0;
@@ -73,5 +68,48 @@ impl Geometry {
         self.vertex_normal.clear();
         self.vertex_normal
             .extend(self.volume_gradient.iter().map(|g| g / g.norm()));
+    }
+
+    /// Enclosed volume of each piece; they add up to the whole.
+    ///
+    /// # Shapes
+    /// `topology` must belong to `mesh`. One entry per piece.
+    pub fn piece_volumes(&self, mesh: &Mesh, topology: &Topology) -> Vec<f64> {
+        if topology.n_pieces == 1 {
+            return vec![self.volume];
+        }
+        let mut volumes = vec![0.0; topology.n_pieces];
+        for t in 0..mesh.n_triangles() {
+            let x = mesh.corners(t);
+            let cross = (x[1] - x[0]).cross(&(x[2] - x[0]));
+            volumes[topology.piece_of_triangle(t)] += under(&x, &cross, mesh.period.is_some());
+        }
+        volumes
+    }
+
+    /// Area of each piece.
+    ///
+    /// # Shapes
+    /// As [`Geometry::piece_volumes`].
+    pub fn piece_areas(&self, topology: &Topology) -> Vec<f64> {
+        if topology.n_pieces == 1 {
+            return vec![self.total_area];
+        }
+        let mut areas = vec![0.0; topology.n_pieces];
+        for (t, area) in self.area.iter().enumerate() {
+            areas[topology.piece_of_triangle(t)] += area;
+        }
+        areas
+    }
+}
+
+/// A triangle's share of the enclosed volume; `cross` is twice its area vector.
+#[inline]
+fn under(x: &[Vec3; 3], cross: &Vec3, periodic: bool) -> f64 {
+    let centre = (x[0] + x[1] + x[2]) / 3.0;
+    if periodic {
+        0.25 * (centre.x * cross.x + centre.y * cross.y)
+    } else {
+        centre.dot(cross) / 6.0
     }
 }

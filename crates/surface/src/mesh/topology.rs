@@ -103,6 +103,10 @@ pub struct Topology {
     pub neighbours: Lists,
     /// Triangles of each vertex, ascending.
     pub vertex_triangles: Lists,
+    /// Connected piece of each vertex, numbered from 0 in the order of their first vertex.
+    pub piece: Vec<u32>,
+    /// Number of pieces.
+    pub n_pieces: usize,
 }
 
 impl Topology {
@@ -189,6 +193,12 @@ impl Topology {
         ends.extend(rim_edges.iter().flat_map(|e| [(e.i, e.j), (e.j, e.i)]));
         ends.sort_unstable();
         let neighbours = Lists::group(n_vertices, ends.iter().copied());
+        let mut sets = petgraph::unionfind::UnionFind::<u32>::new(n_vertices);
+        for &[a, b, c] in triangles {
+            sets.union(a, b);
+            sets.union(b, c);
+        }
+        let (piece, n_pieces) = number_in_order(&sets.into_labeling());
         let topology = Self {
             n_vertices,
             triangles: triangles.to_vec(),
@@ -198,6 +208,8 @@ impl Topology {
             on_rim,
             neighbours,
             vertex_triangles,
+            piece,
+            n_pieces,
         };
         topology.check_vertices()?;
         Ok(topology)
@@ -311,12 +323,22 @@ impl Topology {
 
     /// Connected component of each vertex (numbered from 0 in the order of their first vertex) and their number.
     pub fn components(&self) -> (Vec<u32>, usize) {
-        let mut sets = petgraph::unionfind::UnionFind::<u32>::new(self.n_vertices);
-        for &[a, b, c] in &self.triangles {
-            sets.union(a, b);
-            sets.union(b, c);
+        (self.piece.clone(), self.n_pieces)
+    }
+
+    /// Whether each piece is without a rim.
+    pub fn closed_pieces(&self) -> Vec<bool> {
+        let mut closed = vec![true; self.n_pieces];
+        for edge in &self.rim_edges {
+            closed[self.piece[edge.i as usize] as usize] = false;
         }
-        number_in_order(&sets.into_labeling())
+        closed
+    }
+
+    /// Piece of a triangle.
+    #[inline]
+    pub fn piece_of_triangle(&self, triangle: usize) -> usize {
+        self.piece[self.triangles[triangle][0] as usize] as usize
     }
 
     /// Interior and rim edges as vertex pairs (ascending within each kind).

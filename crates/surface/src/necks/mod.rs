@@ -9,13 +9,16 @@
 //! round is least, when it flares to [`FLARE`] on one side and the other has the area of a sphere of at least
 //! [`TUBE`] neck radii. A cylinder alone is no neck, nor is anything convex.
 
+mod cap;
 mod distance;
+mod sever;
 mod sweep;
 mod verify;
 mod walk;
 
 use crate::geometry::Geometry;
-use crate::{Mesh, Topology, Vec3};
+use crate::{Mesh, Topology, Vec3, pieces};
+pub use sever::{Severed, sever};
 use distance::march;
 use serde::{Deserialize, Serialize};
 use std::f64::consts::TAU;
@@ -78,6 +81,30 @@ struct Candidate {
 /// # Shapes and units
 /// `topology` and `geometry` must belong to `mesh`; lengths and areas in its units.
 pub fn find(mesh: &Mesh, topology: &Topology, geometry: &Geometry) -> Vec<Neck> {
+    if topology.n_pieces == 1 {
+        return find_in_piece(mesh, topology, geometry);
+    }
+    let mut necks = Vec::new();
+    for piece in 0..topology.n_pieces {
+        let (part, vertices) = pieces::extract(mesh, topology, piece);
+        let Ok(around) = Topology::new(part.n_vertices(), &part.triangles) else {
+            continue;
+        };
+        let found = find_in_piece(&part, &around, &Geometry::new(&part));
+        necks.extend(found.into_iter().map(|mut neck| {
+            for crossing in &mut neck.crossings {
+                crossing.right = vertices[crossing.right as usize];
+                crossing.left = vertices[crossing.left as usize];
+            }
+            neck
+        }));
+    }
+    necks.sort_by(|a, b| a.length.total_cmp(&b.length));
+    necks
+}
+
+/// As [`find`], on a surface in one piece.
+fn find_in_piece(mesh: &Mesh, topology: &Topology, geometry: &Geometry) -> Vec<Neck> {
     let mut found = Found {
         mesh,
         topology,

@@ -154,7 +154,7 @@ fn upright(mesh: &Mesh, topology: &Topology, distance: &Distance, side: usize, j
 /// Starting distances of the corners of the triangles that a loop runs through, labelled 0 left, 1 right, and for
 /// each such triangle its index. `None` when a vertex lies on both sides.
 #[allow(clippy::type_complexity)]
-fn starts(
+pub(super) fn starts(
     mesh: &Mesh,
     topology: &Topology,
     curve: &Loop,

@@ -23,6 +23,7 @@ pub use flip::{FlipOutcome, flip_to_delaunay, flip_to_delaunay_with};
 pub use quality::quality;
 pub use sizing::{SizingRequest, curvature_size, sizing_field};
 pub use transfer::VertexData;
+pub(crate) use transfer::match_total;
 
 use crate::{Mesh, MeshError};
 

@@ -184,7 +184,7 @@ impl EditMesh {
 }
 
 /// Shift ratios within their bounds until Σ ratio·lipids is `total`.
-fn match_total(ratio: &mut [f64], lipids: &[f64], total: f64, low: f64, high: f64) {
+pub(crate) fn match_total(ratio: &mut [f64], lipids: &[f64], total: f64, low: f64, high: f64) {
     let sum = |f: &dyn Fn(f64) -> f64, ratio: &[f64]| -> f64 {
         ratio.iter().zip(lipids).map(|(&r, m)| f(r) * m).sum()
     };
