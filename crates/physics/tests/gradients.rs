@@ -43,7 +43,18 @@ fn wave(mesh: &Mesh, phase: f64) -> Vec<f64> {
 
 /// Largest difference between a gradient and differences of the energy, relative to the largest component.
 fn worst(mesh: &Mesh, skip: &dyn Fn(usize) -> bool, gradient: &[Vec3], energy: &dyn Fn(&Mesh) -> f64) -> f64 {
-    let h = 1e-3 * mesh.mean_edge_length();
+    worst_by_steps(mesh, 1e-3, skip, gradient, energy)
+}
+
+/// As [`worst`], with steps of a given share of the mean edge.
+fn worst_by_steps(
+    mesh: &Mesh,
+    share: f64,
+    skip: &dyn Fn(usize) -> bool,
+    gradient: &[Vec3],
+    energy: &dyn Fn(&Mesh) -> f64,
+) -> f64 {
+    let h = share * mesh.mean_edge_length();
     let scale = gradient.iter().map(|g| g.norm()).fold(0.0, f64::max);
     let mut worst: f64 = 0.0;
     let mut moved = mesh.clone();
@@ -194,7 +205,9 @@ fn repulsion_force_is_the_exact_gradient() {
         assert!(found.len() > 20, "{name}: {} contacts", found.len());
         let mut gradient = vec![Vec3::zeros(); mesh.n_vertices()];
         repulsion::add_gradient(&law, &topology, &Geometry::new(&mesh), &found, &mut gradient);
-        let error = worst(&mesh, &|_| false, &gradient, &energy);
+        // Second derivatives jump where the nearest place passes from one triangle, side or corner to the next; steps
+        // this short seldom straddle such a place, and rounding leaves 1e-10.
+        let error = worst_by_steps(&mesh, 1e-5, &|_| false, &gradient, &energy);
         println!("repulsion, {name}: {error:.1e}");
         assert!(error < BOUND, "{name}: {error:e}");
         // Action and reaction.

@@ -17,7 +17,7 @@ const SAG: f64 = 1.0 / 12.0;
 /// Way by which a change of the mesh may shift the surface, in edges.
 const CARE_SHIFT: f64 = 0.1;
 /// Share of the known gap after which it is measured again.
-const SPENT: f64 = 0.5;
+const SPENT: f64 = 0.7;
 /// Share of a gap that facing parts may close in a step; a decay length of the repulsion is always allowed.
 const CLOSING: f64 = 0.3;
 
