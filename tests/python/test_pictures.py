@@ -64,7 +64,8 @@ def test_film(run, tmp_path):
 
 @pytest.mark.skipif(not shutil.which("pvbatch"), reason="needs ParaView's pvbatch")
 def test_film_of_paraview(run, tmp_path):
-    screen = ["xvfb-run", "-a"] if shutil.which("xvfb-run") else []
+    # A busy machine takes a while to open its screen.
+    screen = ["xvfb-run", "-a", "-w", "15"] if shutil.which("xvfb-run") else []
     call(*screen, "pvbatch", program.ROOT / "tools" / "paraview_film.py", run.folder, tmp_path / "film")
     pictures = sorted((tmp_path / "film").iterdir())
     assert len(pictures) == len(list(run.frames()))
