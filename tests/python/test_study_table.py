@@ -56,7 +56,7 @@ def folder(tmp_path_factory):
 
 
 def test_csv_and_parquet_are_alike(folder):
-    csv = pandas.read_csv(folder / "table.csv", float_precision="round_trip")
+    csv = pandas.read_csv(folder / "table.csv")
     parquet = pandas.read_parquet(folder / "table.parquet")
     assert list(csv.columns) == list(parquet.columns)
     assert len(csv) == len(parquet) == 16
@@ -76,5 +76,5 @@ def test_columns_have_types_and_units(folder):
     frame = table.to_pandas()
     assert frame["membrane.bending_rigidity_J"].iloc[0] == pytest.approx(10 * 1.380649e-23 * 298, rel=1e-14)
     assert (frame["outcome"] == "failed").sum() == 8
-    assert frame.loc[frame["outcome"] == "failed", "failure"].str.contains("edge_length").all()
+    assert frame.loc[frame["outcome"] == "failed", "failure"].str.contains("edge length").all()
     assert frame["id"].is_unique

@@ -238,5 +238,6 @@ fn closing(scan: &Scan<'_>, states: &[State], quiet: bool) {
 /// Directories of runs that the study once had.
 fn left_over(scan: &Scan<'_>) -> usize {
     let Ok(entries) = fs::read_dir(scan.folder.join(RUNS_FOLDER)) else { return 0 };
-    entries.flatten().filter(|entry| !scan.runs.iter().any(|run| entry.file_name() == run.id.as_str())).count()
+    let known = |name: &std::ffi::OsStr| scan.runs.iter().any(|run| name == run.id.as_str());
+    entries.flatten().filter(|entry| entry.path().is_dir() && !known(&entry.file_name())).count()
 }

@@ -158,7 +158,7 @@ fn along_axis(study: &Study, runs: &[Run], index: usize) -> Along {
         _ => (String::new(), 1.0),
     };
     let places: Vec<Option<f64>> = numbers.iter().map(|x| x.map(|x| x / size)).collect();
-    Along { scale: Scale::of(&name, &unit, &places, axis.logarithmic), places }
+    Along { scale: Scale::of(&name, &unit, &places, axis.logarithmic, true), places }
 }
 
 /// A column of the series at the end of the runs, in a unit of the right size.
@@ -176,7 +176,7 @@ fn along_column(states: &[State], column: &str) -> Along {
     };
     let places: Vec<Option<f64>> = values.iter().map(|x| x.map(|x| x / size)).collect();
     let name = format!("{} at the end", name.replace('_', " "));
-    Along { scale: Scale::of(&name, &unit, &places, false), places }
+    Along { scale: Scale::of(&name, &unit, &places, false, false), places }
 }
 
 /// A unit in which a value has one to three digits before its point, and its size in SI.

@@ -231,7 +231,7 @@ fn room(diagram: &Diagram, frame: Frame) -> f64 {
         return RADIUS;
     }
     let gap = least(&diagram.x, frame.width).min(least(&diagram.y, frame.height));
-    (0.36 * gap).clamp(2.5, 2.0 * RADIUS)
+    (0.36 * gap).clamp(4.0, 2.0 * RADIUS)
 }
 
 /// The marks of runs at one place: alone in the middle, or on a ring.
@@ -244,12 +244,14 @@ fn draw_marks(body: &mut String, diagram: &Diagram, classes: &[usize], centre: (
         return;
     }
     let slice = std::f64::consts::TAU / count as f64;
+    // Two stand side by side, so that both are at the height of their value.
+    let first = if count == 2 { std::f64::consts::PI } else { -std::f64::consts::FRAC_PI_2 };
     let half = (0.5 * slice).sin();
     // Neighbours on the ring just do not touch.
     let radius = (room * half / (1.0 + half)).min(0.75 * RADIUS);
     let ring = (radius / half * 1.05).min(room);
     for (k, class) in classes.iter().enumerate() {
-        let angle = slice * k as f64 - std::f64::consts::FRAC_PI_2;
+        let angle = first + slice * k as f64;
         let at = (centre.0 + ring * angle.cos(), centre.1 + ring * angle.sin());
         draw_mark(body, diagram.mark(*class), at, radius.max(1.2));
     }

@@ -21,10 +21,12 @@ pub struct Scale {
 
 /// More places than these get round ticks instead of their own.
 const MOST_STOPS: usize = 8;
+/// The sign of negative numbers.
+const MINUS: &str = "−";
 
 impl Scale {
-    /// An axis with numbers.
-    pub fn of(name: &str, unit: &str, places: &[Option<f64>], logarithmic: bool) -> Self {
+    /// An axis with numbers. `own`: whether few values get ticks of their own.
+    pub fn of(name: &str, unit: &str, places: &[Option<f64>], logarithmic: bool, own: bool) -> Self {
         let label = match unit {
             "" => name.to_owned(),
             unit => format!("{name} [{}]", typeset(unit)),
@@ -39,15 +41,18 @@ impl Scale {
             (Some(first), Some(last)) => (scale.flat(*first), scale.flat(*last)),
             _ => (0.0, 1.0),
         };
-        // Half a cell of room where there are cells.
-        let cells = scale.stops.len().saturating_sub(1).max(1) as f64;
-        let room = match last - first {
-            width if width > 0.0 => width * (0.5 / cells).clamp(0.04, 0.25),
+        let flat: Vec<f64> = scale.stops.iter().map(|x| scale.flat(*x)).collect();
+        // Half of the next gap, so that cells around the outer stops are as wide as those beside them.
+        let room = |gap: Option<f64>| match last - first {
+            width if width > 0.0 => (0.5 * gap.unwrap_or(0.0)).clamp(0.04 * width, 0.25 * width),
             _ if logarithmic => 0.3,
-            _ => if first == 0.0 { 1.0 } else { 0.1 * first.abs() },
+            _ if first == 0.0 => 1.0,
+            _ => 0.1 * first.abs(),
         };
-        scale.range = (scale.round(first - room), scale.round(last + room));
-        if logarithmic { scale.logarithmic_ticks() } else { scale.linear_ticks() }
+        let low = first - room(flat.windows(2).next().map(|pair| pair[1] - pair[0]));
+        let high = last + room(flat.windows(2).last().map(|pair| pair[1] - pair[0]));
+        scale.range = (scale.round(low), scale.round(high));
+        if logarithmic { scale.logarithmic_ticks() } else { scale.linear_ticks(own) }
         scale
     }
 
@@ -88,17 +93,17 @@ impl Scale {
         borders
     }
 
-    fn linear_ticks(&mut self) {
+    fn linear_ticks(&mut self, own: bool) {
         let (low, high) = self.range;
-        if self.stops.len() <= MOST_STOPS && self.stops.len() > 1 && self.are_apart(0.09) {
-            self.ticks = self.stops.iter().map(|x| (*x, number(*x))).collect();
+        if own && self.stops.len() <= MOST_STOPS && self.stops.len() > 1 && self.are_apart(0.09) {
+            self.ticks = self.stops.iter().map(|x| (*x, printed(*x))).collect();
             return;
         }
-        let rough = (high - low) / 5.0;
+        let rough = (high - low) / 6.5;
         let power = 10f64.powf(rough.log10().floor());
         let step = [1.0, 2.0, 5.0, 10.0].into_iter().find(|f| f * power >= rough).unwrap_or(10.0) * power;
         let ticks = (low / step).ceil() as i64..=(high / step).floor() as i64;
-        self.ticks = ticks.take(20).map(|k| k as f64 * step).map(|x| (x, number(x))).collect();
+        self.ticks = ticks.take(20).map(|k| k as f64 * step).map(|x| (x, printed(x))).collect();
     }
 
     fn logarithmic_ticks(&mut self) {
@@ -117,20 +122,31 @@ impl Scale {
                     continue;
                 }
                 if digits.contains(&f64::from(digit)) {
-                    self.ticks.push((value, number(value)));
+                    self.ticks.push((value, printed(value)));
                 } else {
                     self.small_ticks.push(value);
                 }
             }
         }
         if self.ticks.len() < 2 {
-            self.ticks = self.stops.iter().map(|x| (*x, number(*x))).collect();
+            self.ticks = self.stops.iter().map(|x| (*x, printed(*x))).collect();
         }
     }
 
     /// Whether all stops are at least a share of the axis apart.
     fn are_apart(&self, share: f64) -> bool {
         self.stops.windows(2).all(|pair| self.share(pair[1]) - self.share(pair[0]) >= share)
+    }
+}
+
+/// A number as it is printed: `10⁻⁷` for 1e-7.
+fn printed(value: f64) -> String {
+    let plain = number(value);
+    let Some((digits, power)) = plain.split_once('e') else { return plain.replace('-', MINUS) };
+    let power: String = power.chars().filter_map(raised).collect();
+    match digits {
+        "1" => format!("10{power}"),
+        digits => format!("{}·10{power}", digits.replace('-', MINUS)),
     }
 }
 
@@ -172,7 +188,7 @@ mod tests {
 
     #[test]
     fn cells_lie_round_their_stops() {
-        let scale = Scale::of("x", "um^2", &some(&[1.0, 2.0, 3.0, 2.0]), false);
+        let scale = Scale::of("x", "um^2", &some(&[1.0, 2.0, 3.0, 2.0]), false, true);
         assert_eq!(scale.label, "x [µm²]");
         assert_eq!(scale.range, (0.5, 3.5));
         let borders = scale.borders();
@@ -181,16 +197,23 @@ mod tests {
 
     #[test]
     fn logarithmic_axes_have_ticks_at_round_values() {
-        let scale = Scale::of("x", "pN", &some(&[0.01, 0.1, 1.0]), true);
+        let scale = Scale::of("x", "pN", &some(&[0.01, 0.1, 1.0]), true, true);
         let texts: Vec<&str> = scale.ticks.iter().map(|(_, text)| text.as_str()).collect();
         assert!(texts.contains(&"0.1") && texts.contains(&"1"));
         assert!((scale.share(0.1) - 0.5).abs() < 1e-12);
     }
 
     #[test]
+    fn powers_are_raised() {
+        assert_eq!(printed(1e-7), "10⁻⁷");
+        assert_eq!(printed(-2.5e-9), "−2.5·10⁻⁹");
+        assert_eq!(printed(0.05), "0.05");
+    }
+
+    #[test]
     fn a_single_value_has_room() {
-        let scale = Scale::of("x", "", &some(&[2.0]), false);
+        let scale = Scale::of("x", "", &some(&[2.0]), false, true);
         assert!(scale.range.0 < 2.0 && scale.range.1 > 2.0);
-        assert!(Scale::of("x", "", &some(&[0.0]), false).range.1 > 0.0);
+        assert!(Scale::of("x", "", &some(&[0.0]), false, true).range.1 > 0.0);
     }
 }
