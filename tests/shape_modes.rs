@@ -80,6 +80,7 @@ fn stiffness(n: usize, degrees: &[usize]) -> Result<Vec<f64>, Box<dyn std::error
         step: 1.0,
         deviatoric: true,
         freedom: &freedom,
+        repulsion: &[],
     };
     assemble(&input, values);
     let system = LinearSystem { values, borders: &[], input: &input };

@@ -42,6 +42,7 @@ pub fn flow(bare: &Bare, load: &[Vec3], resistance: f64) -> Result<(Vec<Vec3>, V
         step: 1e-3,
         deviatoric: false,
         freedom: &vec![Freedom::Free; n],
+        repulsion: &[],
     };
     assemble(&input, values);
     let load = without_rigid(bare, load);

@@ -62,6 +62,7 @@ def test_film(run, tmp_path):
         assert_drawn(path)
 
 
+@pytest.mark.long
 @pytest.mark.skipif(not shutil.which("pvbatch"), reason="needs ParaView's pvbatch")
 def test_film_of_paraview(run, tmp_path):
     # A busy machine takes a while to open its screen.

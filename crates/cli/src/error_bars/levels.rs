@@ -89,6 +89,10 @@ impl Refinement {
                     Some(value) => value.get(part)?,
                 }))
             }) else {
+                // The first entry is what it is about; the others follow where the scenario has them.
+                if overrides.is_empty() {
+                    break;
+                }
                 continue;
             };
             let Some(value) = value else { continue };

@@ -38,7 +38,7 @@ pub fn picture(title: &str, x: (&str, &str), y: (&str, &str), logarithmic: bool,
     let of = |take: &dyn Fn(&(f64, f64)) -> f64| -> Vec<Option<f64>> {
         lines.iter().flat_map(|line| &line.points).map(|point| Some(take(point))).collect()
     };
-    let right = Scale::of(x.0, x.1, &of(&|point| point.0), logarithmic, false);
+    let right = Scale::of(x.0, x.1, &of(&|point| point.0), logarithmic, true);
     let unit = if y.1.is_empty() { String::new() } else { format!("{prefix}{}", y.1) };
     let up = Scale::of(y.0, &unit, &of(&|point| point.1 / size), false, false);
     let (width, height) = (WIDTH - LEFT - RIGHT, HEIGHT - TOP - BOTTOM);
