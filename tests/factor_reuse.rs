@@ -17,7 +17,7 @@ fn simulation() -> Result<Simulation, Box<dyn std::error::Error>> {
     p.step.first = 1e-4;
     p.step.longest = 1e-4;
     p.volume = VolumeCondition::Fixed(vec![(0.0, Geometry::new(&mesh).volume)]);
-    p.phases = Some(Phases { line_tension: 1.0, interface_width: 0.3, diffusion_constant: 0.1 });
+    p.phases = Some(Phases { line_tension: 1.0, interface_width: 0.3, diffusion_constant: 0.1, width_per_radius: 0.0 });
     let composition: Vec<f64> = mesh.positions.iter().map(|x| 0.5 + 0.4 * (3.0 * x.z).tanh()).collect();
     let state = State::at_rest(&p, mesh, &composition, &[], &[])?;
     Ok(Simulation::new(p, state)?)

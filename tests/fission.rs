@@ -27,7 +27,7 @@ fn waist(mut mesh: Mesh, at: f64) -> Result<Mesh, pellicle_surface::MeshError> {
 fn parameters() -> Parameters {
     let mut p = Parameters::bare(1.0, 1.0, 1e4);
     p.gaussian_modulus = Blend::uniform(-0.7);
-    p.phases = Some(Phases { line_tension: 1.0, interface_width: 0.4, diffusion_constant: 0.1 });
+    p.phases = Some(Phases { line_tension: 1.0, interface_width: 0.4, diffusion_constant: 0.1, width_per_radius: 0.0 });
     p.fission = Some(Fission { neck_radius: 0.5 });
     p.step.first = 1e-4;
     p.mesh = Some(MeshCare {

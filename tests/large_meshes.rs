@@ -59,7 +59,7 @@ struct Outcome {
 fn compare(mesh: &Mesh, step: f64, direct: bool) -> Result<Outcome, Box<dyn std::error::Error>> {
     let mut p = Parameters::bare(1.0, 1.0, 1e4);
     p.volume = VolumeCondition::Fixed(vec![(0.0, Geometry::new(mesh).volume)]);
-    p.phases = Some(Phases { line_tension: 4.0, interface_width: 0.2, diffusion_constant: 1.0 });
+    p.phases = Some(Phases { line_tension: 4.0, interface_width: 0.2, diffusion_constant: 1.0, width_per_radius: 0.0 });
     p.mesh = None;
     let composition: Vec<f64> = mesh.positions.iter().map(|x| 0.5 + 0.45 * (4.0 * x.x).tanh()).collect();
     let state = State::at_rest(&p, mesh.clone(), &composition, &[], &[])?;

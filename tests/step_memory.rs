@@ -44,7 +44,7 @@ fn steps_keep_no_memory_and_borrow_little() -> Result<(), Box<dyn std::error::Er
     let mut p = Parameters::bare(1.0, 1.0, 3e4);
     p.mesh = None;
     p.volume = VolumeCondition::Fixed(vec![(0.0, Geometry::new(&mesh).volume)]);
-    p.phases = Some(Phases { line_tension: 4.0, interface_width: 0.3, diffusion_constant: 1.0 });
+    p.phases = Some(Phases { line_tension: 4.0, interface_width: 0.3, diffusion_constant: 1.0, width_per_radius: 0.0 });
     let composition: Vec<f64> = mesh.positions.iter().map(|x| 0.5 + 0.4 * (3.0 * x.z).tanh()).collect();
     let state = State::at_rest(&p, mesh, &composition, &[], &[])?;
     let mut simulation = Simulation::new(p, state)?;

@@ -14,6 +14,15 @@ const BEGUN: f64 = 0.2;
 /// Steps in a row that must be at rest before a run ends for it.
 const RESTING_STEPS: u32 = 5;
 
+/// A step shorter than this share of the time passed, and that changes the free energy by less than this share of its
+/// range, leads nowhere if longer ones are refused because the energy would rise.
+const SHORT: f64 = 1e-3;
+const NOTHING: f64 = 1e-9;
+/// Weight of a step before which a longer one was refused for its energy against one without; and the sum at which a
+/// run is stalled.
+const REFUSED: u32 = 4;
+const STALLED: u32 = 400;
+
 /// What has been written and what comes next. Part of each checkpoint; nothing in it depends on when checkpoints
 /// were written, or on wall time.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
@@ -46,6 +55,10 @@ pub struct Cursor {
     pub most_domains: u64,
     /// Steps at rest in a row.
     pub resting: u32,
+    /// Free energy after the last step.
+    pub last_energy: f64,
+    /// How long steps have led nowhere.
+    pub stalled: u32,
     /// What bounded accepted steps.
     pub bounded_by: Reasons,
     /// Why attempts were refused.
@@ -67,6 +80,8 @@ pub enum Ended {
     SelfContact([f64; 3]),
     /// Nothing moves any more.
     Rest,
+    /// Steps lead nowhere: longer ones would raise the free energy.
+    Stalled,
     /// The solver gave up, in words.
     Trouble(String),
 }
@@ -149,6 +164,24 @@ impl Cursor {
         self.resting = if unrest < limit { self.resting.saturating_add(1) } else { 0 };
     }
 
+    /// Note whether the last step led anywhere; `risen`: a longer one was refused because the free energy would rise.
+    /// Called before [`Cursor::stepped`].
+    pub fn note_stall(&mut self, time: f64, step: f64, free_energy: f64, risen: bool) {
+        let (low, high) = self.energy_range.unwrap_or((free_energy, free_energy));
+        let nothing = (free_energy - self.last_energy).abs() <= NOTHING * (high - low);
+        self.last_energy = free_energy;
+        self.stalled = match (nothing && step < SHORT * time, risen) {
+            (true, true) => self.stalled.saturating_add(REFUSED),
+            (true, false) => self.stalled.saturating_sub(1),
+            (false, _) => 0,
+        };
+    }
+
+    /// Whether steps lead nowhere.
+    pub fn is_stalled(&self) -> bool {
+        self.stalled >= STALLED
+    }
+
     /// Whether the run is at rest.
     pub fn at_rest(&self) -> bool {
         self.resting >= RESTING_STEPS
@@ -209,6 +242,9 @@ impl Ended {
             ),
             Self::Domains(count) => format!("the number of domains fell to {count}"),
             Self::Rest => "the membrane came to rest".to_owned(),
+            Self::Stalled => "no step lowers the free energy any further: at rest to the accuracy of this mesh; a finer \
+                              mesh, or a narrower interface with it, may tell more"
+                .to_owned(),
             Self::Trouble(why) => why.clone(),
         }
     }
@@ -220,7 +256,7 @@ impl Ended {
             Self::Neck(_) => "neck_radius",
             Self::Domains(_) => "domain_count",
             Self::SelfContact(_) => "self_contact",
-            Self::Rest => "at_rest",
+            Self::Rest | Self::Stalled => "at_rest",
             Self::Trouble(_) => "trouble",
         }
     }

@@ -14,6 +14,7 @@ use super::summary::{self, Accounts, Outcome};
 use super::words::with_unit;
 use crate::failure::Failure;
 use pellicle_physics::diagnostics::{Diagnostics, size};
+use pellicle_physics::step::control::Reason;
 use pellicle_physics::{PhysicsError, Simulation, StepReport};
 use std::path::PathBuf;
 use std::time::Instant;
@@ -192,6 +193,10 @@ impl Driver {
             ));
         }
         self.cursor.bounded_by.add(report.bounded_by);
+        if self.plan.stop.at_rest.is_some() && report.unrest.is_finite() {
+            let risen = report.refused.iter().any(|(_, reason)| *reason == Reason::EnergyRise);
+            self.cursor.note_stall(self.simulation.state.time, report.step, report.free_energy, risen);
+        }
         self.cursor.stepped(report.step, report.free_energy, report.speed * report.step);
         if let Some(limit) = self.plan.stop.at_rest {
             self.cursor.note_rest(limit, report.unrest);
@@ -249,6 +254,9 @@ impl Driver {
         }
         if stop.at_rest.is_some() && self.cursor.at_rest() {
             return Some(Ended::Rest);
+        }
+        if stop.at_rest.is_some() && self.cursor.is_stalled() {
+            return Some(Ended::Stalled);
         }
         (self.simulation.state.time >= stop.time).then_some(Ended::Time)
     }
