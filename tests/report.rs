@@ -32,6 +32,10 @@ fn check_tags(page: &str) -> Result<Vec<&str>, String> {
             }
         }
         rest = &rest[end + 1..];
+        if name == "style" && !tag.starts_with('/') {
+            // Rules are no markup, and may hold brackets.
+            rest = &rest[rest.find("</style>").ok_or("a style without end")?..];
+        }
     }
     if open.is_empty() { Ok(names) } else { Err(format!("never closed: {open:?}")) }
 }

@@ -68,7 +68,11 @@ fn in_units(mut state: State, old: &Scales, new: &Scales) -> State {
         amounts.iter_mut().for_each(|amount| *amount *= area);
     }
     state.tension.iter_mut().for_each(|t| *t *= tension);
+    state.interface_width.iter_mut().for_each(|width| *width *= length);
     state.pressure *= pressure;
+    for piece in &mut state.pieces {
+        piece.pressure *= pressure;
+    }
     state.velocity.fill(Vec3::zeros());
     for load in &mut state.loads {
         for x in [&mut load.centre, &mut load.start, &mut load.position] {
@@ -101,6 +105,12 @@ impl Source {
         }
         if let AreaCondition::Reservoir(tension) = parameters.area {
             self.settle(&mut state, tension, parameters.area_compression_modulus);
+        }
+        if let Some(phases) = &parameters.phases {
+            let narrow = phases.width_per_radius > 0.0;
+            for width in &mut state.interface_width {
+                *width = if narrow { width.min(phases.interface_width) } else { phases.interface_width };
+            }
         }
         state.step = parameters.step.first;
         match Simulation::begin_from(parameters.clone(), state.clone()) {
