@@ -32,11 +32,20 @@ def distance_to_contour(points: np.ndarray, contour: np.ndarray) -> np.ndarray:
 
 
 def about_axis(surface, scale: float, centred=True) -> np.ndarray:
-    """(r, z) of the points, in units of the scale [µm]; the axis is z through the centre of area."""
+    """(r, z) of the points, in units of the scale [µm].
+
+    The axis is z; of a free body its own axis near z through the centre of area, as a free body may turn.
+    """
     x = np.asarray(surface.points, float)
     if centred:
         sizes = surface.compute_cell_sizes(length=False, volume=False)["Area"]
-        x = x - np.average(surface.cell_centers().points, axis=0, weights=sizes)
+        centres = np.asarray(surface.cell_centers().points, float)
+        middle = np.average(centres, axis=0, weights=sizes)
+        x, centres = x - middle, centres - middle
+        axes = np.linalg.eigh((centres * sizes[:, None]).T @ centres)[1]
+        axis = axes[:, np.argmax(np.abs(axes[2]))]
+        along = x @ axis
+        x = np.column_stack([np.linalg.norm(x - np.outer(along, axis), axis=1), 0 * along, along])
     x = x / scale
     return np.column_stack([np.hypot(x[:, 0], x[:, 1]), x[:, 2]])
 
