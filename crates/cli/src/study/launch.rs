@@ -52,8 +52,6 @@ pub struct Moment {
 /// A run that has come to its end, in trouble or not.
 #[derive(Clone, Debug)]
 pub struct EndOfRun {
-    /// Directory of the run.
-    pub folder: PathBuf,
     /// Its `summary.json`.
     pub summary: Value,
 }
@@ -72,7 +70,7 @@ impl EndOfRun {
     pub fn read(folder: &Path) -> Option<Self> {
         let text = fs::read(folder.join(SUMMARY_FILE)).ok()?;
         let summary: Value = serde_json::from_slice(&text).ok()?;
-        let end = Self { folder: folder.to_owned(), summary };
+        let end = Self { summary };
         (!matches!(end.stopped_by(), "" | "interrupted")).then_some(end)
     }
 

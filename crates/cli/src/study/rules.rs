@@ -388,7 +388,7 @@ mod tests {
             "stopped_by": "neck_radius",
             "end": { "neck_radius_m": 1.5e-7, "domain_count": 2, "free_energy_J": 1e-18, "load_force_N": null },
         });
-        EndOfRun { folder: Default::default(), summary }
+        EndOfRun { summary }
     }
 
     fn holds(text: &str) -> bool {
