@@ -73,11 +73,6 @@ pub struct StepReport {
 const SETTLED: f64 = 0.01;
 /// Rise of free energy, relative to its size, that rounding and remapping may cause.
 pub(super) const RISE: f64 = 1e-12;
-/// Share of its own dissipation by which a step at rest may raise the free energy. At rest composition and shape are
-/// each at ease only with the other where it was half a step ago; the longer the step, the higher that energy.
-const RISE_AT_REST: f64 = 0.01;
-/// At rest: as long again at such a rise would come to less than this share of the energy turned over so far.
-const AT_REST: f64 = 1e-4;
 /// A load beyond this is refused rather than corrected in the next step.
 const LATITUDE: f64 = 2.5;
 /// So many steps at the start are refused at a load of 1.
@@ -312,9 +307,7 @@ impl Simulation {
         let rise = self.energies.total() - start.total() - work.with_final_force;
         let scale = start.total().abs().max(start.bending.abs()).max(start.phase.abs());
         let dissipated = motion.dissipated + motion.permeation + transported;
-        let at_rest = self.share_in_as_long_again(rise / step) < AT_REST;
-        let allowed = RISE * scale + if at_rest { RISE_AT_REST * dissipated } else { 0.0 };
-        if rise.is_nan() || rise > allowed {
+        if rise.is_nan() || rise > RISE * scale {
             return Ok(Attempt::Refused(Reason::EnergyRise));
         }
         // Where the shape is unstable the true defect exceeds the prediction, which knows only the positive part of the
@@ -362,12 +355,6 @@ impl Simulation {
 
     /// See [`StepReport::unrest`]; `rate` is the energy released per time.
     fn unrest(&self, rate: f64) -> f64 {
-        100.0 * self.share_in_as_long_again(rate)
-    }
-
-    /// What `rate`, an energy per time, would come to in as long a time again, as a share of all energy turned over so
-    /// far. Infinite while a load or the volume is driven.
-    fn share_in_as_long_again(&self, rate: f64) -> f64 {
         let ends = |path: &[(f64, Vec3)]| path.last().map_or(0.0, |p| p.0);
         let loads = self.parameters.loads.iter().map(|load| match &load.pull {
             Pull::Force(path) | Pull::Trap { path, .. } => ends(path),
@@ -383,7 +370,7 @@ impl Simulation {
         let change = (self.energies.total() - ledger.start_energy).abs();
         // Rounding of the energies must not pass for motion of a membrane that was at rest from the start.
         let turned_over = change.max(ledger.work.abs()).max(1e-9 * ledger.start_energy.abs());
-        rate * self.state.time / turned_over.max(f64::MIN_POSITIVE)
+        100.0 * rate * self.state.time / turned_over.max(f64::MIN_POSITIVE)
     }
 
     /// Work done on the membrane by loads and by a driven volume.
